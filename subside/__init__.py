@@ -1,0 +1,37 @@
+"""Land subsidence from the pressure grid of a flow simulation.
+
+>>> import subside as sd
+>>> result = sd.run("scenario.toml")  # doctest: +SKIP
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from subside.export.netcdf import read_result
+    from subside.grid import open_grid
+    from subside.pipeline import run
+    from subside.scenario import load_scenario
+
+__all__ = ["load_scenario", "open_grid", "read_result", "run"]
+
+_HOME = {
+    "load_scenario": "subside.scenario",
+    "open_grid": "subside.grid",
+    "read_result": "subside.export.netcdf",
+    "run": "subside.pipeline",
+}
+
+
+def __getattr__(name: str) -> Any:
+    # public names load their module when first used, so that `--help` needs no numpy
+    if name in _HOME:
+        from importlib import import_module
+
+        return getattr(import_module(_HOME[name]), name)
+    raise AttributeError(f"module 'subside' has no attribute '{name}'")
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *__all__})

@@ -1,0 +1,199 @@
+"""From the scenario's rock parameters to the numbers of each cell."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from types import SimpleNamespace
+from typing import Any
+
+import numpy as np
+import xarray as xr
+
+from subside.api import COMMON_LAW_PARAMETERS, InputError, Law, Parameter, Rock
+from subside.errors import nearest
+from subside.scenario import ByRegion, CellField, CompactionTable, RockValue, parameter_value
+from subside.units import same_dimension
+
+__all__ = ["Block", "assign_blocks", "field_of_cells"]
+
+
+class Block:
+    """One `[[compaction]]` table made ready: its law, its cells, its parameters.
+
+    Attributes
+    ----------
+    cells : array of int (n,)
+        Which cells of the dataset follow this law.
+    """
+
+    def __init__(self, table: CompactionTable, law: Law, where: str, cells: np.ndarray,
+                 dataset: xr.Dataset) -> None:
+        self.table = table
+        self.law = law
+        self.where = where
+        self.cells = cells
+        self._dataset = dataset
+        regions = [str(r) for r in dataset["region_name"].values]
+        declared = {p.name: p for p in (*COMMON_LAW_PARAMETERS, *law.parameters)}
+        for key in table.parameters:
+            if key not in declared:
+                raise InputError(f"{where}: law '{law.name}' has no key '{key}'."
+                                 + nearest(key, declared))
+        self.values: dict[str, RockValue | None] = {}
+        for name, parameter in declared.items():
+            if name in table.parameters:
+                self.values[name] = parameter_value(
+                    table.parameters[name], parameter, where, regions)
+            elif parameter.required:
+                raise InputError(f"{where}: law '{law.name}' needs the key '{name}' "
+                                 f"({parameter.meaning}); for example {name} = "
+                                 f"\"{parameter.example}\".")
+            else:
+                self.values[name] = parameter.default
+        self._arrays = {name: self.expand(declared[name], value)
+                        for name, value in self.values.items()}
+        law.check(self.rock(slice(None)))
+
+    def rock(self, part: slice) -> Rock:
+        """Parameters of a part of the block's cells: floats, or arrays (cell,), or None."""
+        return SimpleNamespace(**{
+            name: _read_only(value[part]) if isinstance(value, np.ndarray) else value
+            for name, value in self._arrays.items()
+        })
+
+    def value_of_cells(self, name: str) -> np.ndarray | float | None:
+        """One parameter for all cells of the block."""
+        return self._arrays[name]
+
+    def expand(self, parameter: Parameter, value: RockValue | None) -> Any:
+        """A parameter's value for the cells of the block: a float, an array (cell,), or None."""
+        if value is None or isinstance(value, (int, float)):
+            return value
+        if isinstance(value, CellField):
+            values = field_of_cells(self._dataset, value.name, parameter.unit,
+                                    f"{self.where} {parameter.name}", self.cells)
+            if values.ndim > 1:
+                raise InputError(f"{self.where} {parameter.name}: the field '{value.name}' changes "
+                                 "with time; a rock parameter must not.")
+            if values.size:
+                parameter.check(float(values.min()), float(values.max()),
+                                f"{self.where} (field '{value.name}')")
+            return values
+        return self._by_region(parameter, value)
+
+    def _by_region(self, parameter: Parameter, value: ByRegion) -> np.ndarray:
+        names = [str(r) for r in self._dataset["region_name"].values]
+        index = self._dataset["region"].values[self.cells]
+        table = np.array([value.values.get(n, np.nan) for n in names])
+        numbers = table[index]
+        if np.isnan(numbers).any():
+            absent = sorted({names[i] for i in index[np.isnan(numbers)]})
+            raise InputError(f"{self.where} {parameter.name}: by_region gives no value for "
+                             f"'{absent[0]}'; add it, or leave that region to another "
+                             "[[compaction]] table.")
+        return numbers
+
+
+def _read_only(values: np.ndarray) -> np.ndarray:
+    view = values.view()
+    view.flags.writeable = False
+    return view
+
+
+def field_of_cells(dataset: xr.Dataset, name: str, si_unit: str, where: str,
+                   cells: np.ndarray) -> np.ndarray:
+    """A grid field for some cells, SI: (n,) or (time, n).
+
+    Raises
+    ------
+    InputError
+        If the grid has no such field, or it has no unit or one of another kind, or has gaps.
+    """
+    reserved = {"corners", "centroid", "k", "j", "i", "edge", "region", "pressure"}
+    known = [str(v) for v in dataset.data_vars if str(v) not in reserved
+             and "cell" in dataset[v].dims]
+    if name not in known:
+        raise InputError(f"{where}: the grid has no field '{name}'." + nearest(name, known))
+    variable = dataset[name]
+    unit = variable.attrs.get("units")
+    if unit is None:
+        raise InputError(f"{where}: the grid's field '{name}' has no units attribute; give it one, "
+                         f"for example '{si_unit}'.")
+    if not same_dimension(str(unit), si_unit):
+        raise InputError(f"{where}: the grid's field '{name}' is in '{unit}', which is not a unit "
+                         f"of this parameter (such as '{si_unit}').")
+    values = np.asarray(variable.transpose(..., "cell").values, dtype=float)[..., cells]
+    bad = ~np.isfinite(values)
+    if bad.any():
+        first = int(cells[np.nonzero(bad.any(axis=0) if bad.ndim > 1 else bad)[0][0]])
+        raise InputError(f"{where}: the grid's field '{name}' is missing in {int(bad.sum())} active "
+                         f"cells, first {place(dataset, first)}; fill the gaps or mark the cells "
+                         "inactive.")
+    return values
+
+
+def place(dataset: xr.Dataset, cell: int) -> str:
+    """Where a cell stands in its file: ``(k=1, j=2, i=3)`` or ``cell 17``."""
+    if "k" in dataset:
+        return "(" + ", ".join(f"{n}={int(dataset[n].values[cell])}" for n in "kji") + ")"
+    return f"cell {cell}"
+
+
+def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any]],
+                  dataset: xr.Dataset) -> list[Block]:
+    """Each cell to exactly one block.
+
+    Parameters
+    ----------
+    tables : sequence of CompactionTable
+        The scenario's `[[compaction]]`.
+    laws : mapping
+        Law class by name.
+    dataset : Dataset
+        The cell dataset.
+
+    Raises
+    ------
+    InputError
+        Unknown region, a region in two blocks, two blocks without regions, a cell in no block.
+    """
+    names = [str(r) for r in dataset["region_name"].values]
+    region = dataset["region"].values
+    owner = np.full(len(names), -1)
+    rest: int | None = None
+    for number, table in enumerate(tables):
+        where = _where(tables, number)
+        if table.regions is None:
+            if rest is not None:
+                raise InputError(f"{where}: two [[compaction]] tables name no regions; only one "
+                                 "may take the cells that no other names.")
+            rest = number
+            continue
+        for name in table.regions:
+            if name not in names:
+                raise InputError(f"{where}: the grid has no region '{name}'."
+                                 + nearest(name, names))
+            index = names.index(name)
+            if owner[index] >= 0:
+                raise InputError(f"{where}: region '{name}' is already in "
+                                 f"{_where(tables, int(owner[index]))}; a cell belongs to one "
+                                 "block.")
+            owner[index] = number
+    present = np.unique(region)
+    if rest is None:
+        orphan = [names[r] for r in present if owner[r] < 0]
+        if orphan:
+            raise InputError(f"region '{orphan[0]}' ({int((region == names.index(orphan[0])).sum())}"
+                             " cells) belongs to no [[compaction]] table; add it to one, or leave "
+                             "'regions' out of one table to take the rest.")
+    else:
+        owner[owner < 0] = rest
+    blocks = []
+    for number, table in enumerate(tables):
+        cells = np.nonzero(owner[region] == number)[0]
+        blocks.append(Block(table, laws[table.law](), _where(tables, number), cells, dataset))
+    return blocks
+
+
+def _where(tables: Sequence[CompactionTable], number: int) -> str:
+    return "[compaction]" if len(tables) == 1 else f"[[compaction]] number {number + 1}"

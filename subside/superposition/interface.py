@@ -1,0 +1,93 @@
+"""What goes into a superposition and what comes out: arrays in SI, no labels.
+
+A solver is anything with the `solve` of `Solver`; `direct` is the plain sum and the referee.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any, Protocol
+
+import numpy as np
+
+__all__ = ["DISPLACEMENT", "GRADIENT", "Bodies", "Fields", "Solver", "Targets"]
+
+DISPLACEMENT = ("down", "east", "north")
+"""Components of displacement, m: downward, to the east, to the north."""
+
+GRADIENT = ("down_by_east", "down_by_north", "strain_east", "strain_north", "strain_shear")
+"""Horizontal derivatives at the surface, 1: slopes of subsidence, and the horizontal strain tensor
+(extension positive; `strain_shear` is the tensor's, half the engineering shear strain)."""
+
+Fields = dict[str, np.ndarray]
+"""Component name to (nt, target)."""
+
+
+@dataclass(frozen=True)
+class Bodies:
+    """The cells as bodies in space; depth is below the ground or seabed.
+
+    Attributes
+    ----------
+    count : int
+        Number of cells.
+    corners : callable
+        Index array (m,) to corners (m, 8, 3): x, y, depth in m; 4 of the top face going round,
+        then the 4 below them.
+    boxes : array (count, 7) or None
+        x, y, top, bottom, dx, dy, azimuth (m, degrees) when every cell is an upright box.
+    """
+
+    count: int
+    corners: Callable[[np.ndarray], np.ndarray]
+    boxes: np.ndarray | None = None
+
+
+@dataclass(frozen=True)
+class Targets:
+    """Where the field is wanted: x, y in m, depth in m below the ground or seabed, each (n,)."""
+
+    x: np.ndarray
+    y: np.ndarray
+    depth: np.ndarray
+
+    @property
+    def at_surface(self) -> np.ndarray:
+        """True for targets on the ground or seabed."""
+        return np.asarray(self.depth == 0.0)
+
+
+class Solver(Protocol):
+    """One way to add up the sources."""
+
+    name: str
+
+    def solve(
+        self,
+        bodies: Bodies,
+        moments: Mapping[str, np.ndarray],
+        targets: Targets,
+        earth: Any,
+        *,
+        tolerance: float,
+        gradient: bool = False,
+        progress: Callable[[float], None] = lambda pairs: None,
+    ) -> Fields:
+        """The field of all cells at all targets.
+
+        Parameters
+        ----------
+        bodies : Bodies
+        moments : mapping of source kind to array (nt, cell)
+            m3 of volume lost, for ``"contraction"`` and ``"closure"``.
+        targets : Targets
+        earth : EarthModel
+        tolerance : float
+            Error allowed, relative to the largest displacement.
+        gradient : bool
+            Also return the `GRADIENT` components (targets at the surface only).
+        progress : callable
+            Told the number of cell-target pairs done since the last call.
+        """
+        ...

@@ -1,0 +1,189 @@
+"""Quantities with units, to and from SI.
+
+`pint` does the arithmetic. Added here are the spellings that flow simulators and rock laboratories
+use (barsa, psia, mD, ...), the exponent style of CF files (``kg m-3``), and refusals of the few
+names that general libraries read as something else without saying so.
+"""
+
+from __future__ import annotations
+
+import functools
+import re
+from typing import Any
+
+from subside.errors import InputError
+
+__all__ = ["parse_quantity", "scale_to_si", "same_dimension", "SECONDS_PER_YEAR"]
+
+SECONDS_PER_YEAR = 365.25 * 86400.0
+
+# Exact factors: 1 darcy = 9.869233e-13 m2 (SPE Metric Standard, 1984); 1 oil barrel = 42 US gal.
+_DEFINITIONS = """
+barsa = bar
+bara = bar
+psia = psi
+PSI = psi
+PSIA = psi
+kgf_per_cm2 = kgf / cm ** 2
+mD = 9.869233e-16 m**2
+millidarcy = mD
+darcy_unit = 9.869233e-13 m**2
+US_survey_foot = 1200/3937 m = usft = ftUS
+stb = 0.158987294928 m**3 = STB
+fraction = []
+""".strip().splitlines()
+
+_REFUSED = {
+    "barg": "a gauge pressure; add the atmosphere and give 'bar' (absolute)",
+    "psig": "a gauge pressure; add the atmosphere and give 'psi' (absolute)",
+    "md": "ambiguous (a milli-day elsewhere); write 'mD' for millidarcy",
+    "mpa": "ambiguous; write 'MPa' for megapascal or 'mPa' for millipascal",
+    "a": "ambiguous (year or are); write 'year'",
+    "m/a": "ambiguous; write 'm/year'",
+}
+_ALIASES = {"bbl": "stb", "%": "percent", "kgf/cm2": "kgf_per_cm2", "D": "darcy_unit",
+            "darcy": "darcy_unit", "yr": "year", "°": "degree", "degrees": "degree",
+            "barrel": "stb", "per year": "1/year", "": "dimensionless", "1": "dimensionless"}
+_COMMON = "Pa, kPa, MPa, bar, barsa, psi, psia, atm, m, ft, km, mD, 1/bar, 1/psi, day, year, mm/year"
+_NUMBER = r"[-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?"
+_EXPONENT = re.compile(r"(?<![\w.])([A-Za-z_%°µ]+)\^?(-?\d+)(?![\w.])")
+
+
+@functools.cache
+def _registry() -> Any:
+    import pint
+
+    registry = pint.UnitRegistry(case_sensitive=True, cache_folder=None)
+    for line in _DEFINITIONS:
+        registry.define(line)
+    return registry
+
+
+def _tidy(unit: str) -> str:
+    """``kg m-3`` to ``kg*m**-3``, known aliases to their one name."""
+    text = unit.strip()
+    if text in _ALIASES:
+        return _ALIASES[text]
+    text = text.replace("·", "*").replace("²", "**2").replace("³", "**3").replace("^", "**")
+    words = {w for w in re.findall(r"[A-Za-z_%°µ]+", text)}
+    for word in words & _REFUSED.keys():
+        raise InputError(f"unit '{unit}' is {_REFUSED[word]}.")
+    if "**" not in text:
+        text = _EXPONENT.sub(r"\1**\2", text)
+    text = re.sub(r"(?<=[\w)])\s+(?=[A-Za-z(])", "*", text)
+    for word in words & _ALIASES.keys():
+        text = re.sub(rf"(?<![\w]){re.escape(word)}(?![\w])", _ALIASES[word], text)
+    return text
+
+
+@functools.lru_cache(maxsize=512)
+def _parsed(unit: str) -> Any:
+    """The pint quantity (1 unit), or a clear error for a name nobody knows."""
+    if unit.strip() in _REFUSED:
+        raise InputError(f"unit '{unit}' is {_REFUSED[unit.strip()]}.")
+    text = _tidy(unit)
+    # A unit comes from a file: nothing that could keep the machine busy (9**9**9**9) goes further.
+    if len(text) > 80 or re.search(r"\d\s*\)*\s*\*\*|\*\*\s*\(?\s*[-+]?\d{2,}", text):
+        raise InputError(f"unknown unit '{unit[:80]}'; known are for example {_COMMON}.")
+    registry = _registry()
+    try:
+        quantity = registry.parse_expression(text)
+    except Exception as error:
+        raise InputError(
+            f"unknown unit '{unit}'; known are for example {_COMMON}."
+        ) from error
+    if isinstance(quantity, (int, float)):
+        quantity = registry.Quantity(quantity, "")
+    return quantity
+
+
+@functools.lru_cache(maxsize=512)
+def scale_to_si(unit: str, si_unit: str) -> tuple[float, float]:
+    """`(factor, offset)` such that ``si = value * factor + offset``.
+
+    Parameters
+    ----------
+    unit : str
+        What the file or the user says, such as ``"barsa"`` or ``"1/psi"``.
+    si_unit : str
+        The SI unit of the thing, such as ``"Pa"``; ``"1"`` for a plain number.
+
+    Raises
+    ------
+    InputError
+        If the unit is unknown, refused as ambiguous, or of another dimension.
+    """
+    quantity = _parsed(unit)
+    target = _parsed(si_unit)
+    if not quantity.is_compatible_with(target.units):
+        raise InputError(f"unit '{unit}' is not a unit of {_what(si_unit)} (such as '{si_unit}').")
+    if str(quantity.units) in {"degree_Celsius", "degree_Fahrenheit"}:
+        registry = _registry()
+        low = registry.Quantity(0.0, quantity.units).to(target.units).magnitude
+        high = registry.Quantity(1.0, quantity.units).to(target.units).magnitude
+        return float(high - low), float(low)
+    return float(quantity.to(target.units).magnitude / target.magnitude), 0.0
+
+
+def same_dimension(unit: str, si_unit: str) -> bool:
+    """True if `unit` is known and measures the same thing as `si_unit`."""
+    try:
+        scale_to_si(unit, si_unit)
+    except InputError:
+        return False
+    return True
+
+
+def parse_quantity(value: object, si_unit: str, *, name: str, unit_needed: bool = False) -> float:
+    """A quantity of the scenario as an SI number.
+
+    Parameters
+    ----------
+    value : str, int or float
+        ``"1.1e-5 1/bar"``, ``"2.9 km"``, or a plain number, which is taken as SI.
+    si_unit : str
+        The SI unit wanted, ``"1"`` for a plain number.
+    name : str
+        What is being read (a key), for the message.
+    unit_needed : bool
+        Refuse plain numbers (times and rates, where SI seconds are never what was meant).
+
+    Raises
+    ------
+    InputError
+        Naming the key, the value and the way out.
+    """
+    if isinstance(value, bool) or not isinstance(value, (int, float, str)):
+        raise InputError(f"{name} = {value!r} is not a quantity; write \"NUMBER UNIT\", "
+                         f"for example \"1 {si_unit}\".")
+    if isinstance(value, (int, float)):
+        if unit_needed and value != 0:
+            raise InputError(f"{name} = {value!r} has no unit; times and rates need one, "
+                             f"for example \"{value} year\".")
+        number, unit = float(value), si_unit
+    else:
+        match = re.fullmatch(rf"\s*({_NUMBER}|[-+]?inf|nan)\s*(.*?)\s*", value)
+        if not match:
+            raise InputError(f"{name} = {value!r} is not a quantity; write \"NUMBER UNIT\", "
+                             f"for example \"1 {si_unit}\".")
+        number, unit = float(match[1]), match[2]
+        if not unit:
+            if si_unit != "1":
+                raise InputError(f"{name} = {value!r} has no unit; write for example "
+                                 f"\"{match[1]} {si_unit}\".")
+            unit = "1"
+    if not abs(number) < float("inf"):
+        raise InputError(f"{name} = {value!r} is not a finite number.")
+    try:
+        factor, offset = scale_to_si(unit, si_unit)
+    except InputError as error:
+        raise InputError(f"{name} = {value!r}: {error}") from None
+    return number * factor + offset
+
+
+def _what(si_unit: str) -> str:
+    return {
+        "Pa": "pressure or stress", "1/Pa": "compressibility", "m": "length", "m2": "area",
+        "s": "time", "1": "a plain number", "Pa/s": "stress rate", "m3": "volume",
+        "degree": "angle", "Pa/m": "pressure gradient", "m/s": "rate", "kg m-3": "density",
+    }.get(si_unit, f"the kind of '{si_unit}'")
