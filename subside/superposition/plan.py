@@ -56,6 +56,6 @@ def make_plan(method: str, cells: int, targets: int, steps: int, components: int
     if method not in ("auto", *_METHODS):
         raise InputError(f"[solver] method = '{method}' is not known."
                          + nearest(method, ("auto", *_METHODS)))
-    tile = 8.0 * components * 256 * 2048
+    tile = 8.0 * components * 64 * 2048 * 4
     memory = 8.0 * steps * (cells * (3 + sources) + targets * components * 2) + tile
     return Plan("direct", float(cells) * targets * sources, memory)

@@ -19,7 +19,7 @@ for _n in range(1, MAX_ORDER + 1):
     GAUSS_WEIGHTS[_n, :_n] *= 0.5
 
 
-def surface_rule(corners: np.ndarray, tolerance: float) -> np.ndarray:
+def surface_rule(corners: np.ndarray, tolerance: float, gradient: bool) -> np.ndarray:
     """Gauss orders and panels of each cell for targets at the surface.
 
     Parameters
@@ -28,6 +28,8 @@ def surface_rule(corners: np.ndarray, tolerance: float) -> np.ndarray:
         Depth below the surface, m.
     tolerance : float
         Allowed error of one cell's field over that field's own largest value.
+    gradient : bool
+        Whether that holds for the horizontal derivatives too, which need more points.
 
     Returns
     -------
@@ -40,12 +42,13 @@ def surface_rule(corners: np.ndarray, tolerance: float) -> np.ndarray:
     top = corners[:, :, 2].min(axis=1)
     thickness = corners[:, :, 2].max(axis=1) - top
     half.append(0.5 * thickness)
+    quantity = "gradient" if gradient else "displacement"
     rule = np.ones((corners.shape[0], 6), dtype=np.int64)
     for direction in range(3):
-        vertical = direction == 2
+        word = "vertical" if direction == 2 else "horizontal"
         panels = np.ones(corners.shape[0], dtype=np.int64)
         for _ in range(12):
-            order = gauss_order(half[direction] / panels, top, tolerance, vertical=vertical)
+            order = gauss_order(half[direction] / panels, top, tolerance, word, quantity)
             too_many = order > MAX_ORDER
             if not too_many.any():
                 break

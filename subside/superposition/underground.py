@@ -19,7 +19,7 @@ from subside.earth.polyhedron import contraction_hexahedron_depth
 from subside.superposition.hexahedron import octant_of, sample_cell, volume_of
 from subside.superposition.rule import MAX_ORDER
 
-__all__ = ["fill_underground"]
+__all__ = ["add_underground"]
 
 _IMAGE_ORDER = 6
 _SPLITS = 4
@@ -27,23 +27,19 @@ _SPLITS = 4
 
 
 @njit(cache=True, parallel=True)
-def fill_underground(tile: np.ndarray, x: np.ndarray, y: np.ndarray, z: np.ndarray,
-                     corners: np.ndarray, boxes: np.ndarray, closure: bool, poisson: float,
-                     tolerance: float) -> None:
-    """Add into ``tile (3, cell, target)``: downward, east, north per m3 of moment.
+def add_underground(result: np.ndarray, x: np.ndarray, y: np.ndarray, z: np.ndarray,
+                    corners: np.ndarray, boxes: np.ndarray, moment: np.ndarray, closure: bool,
+                    poisson: float, tolerance: float) -> None:
+    """Add into ``result (component, time, target)``: downward, east, north of ``moment (cell,
+    time)`` in m3.
 
     `boxes` has one row for each cell, or none when the cells are hexahedra.
     """
     is_box = boxes.shape[0] > 0
-    for c in prange(corners.shape[0]):
-        hexa = corners[c]
-        centre = np.zeros(3)
-        for n in range(8):
-            centre += hexa[n] / 8.0
-        reach = 0.0
-        for n in range(8):
-            reach = max(reach, np.sqrt(((hexa[n] - centre) ** 2).sum()))
-        for t in range(x.size):
+    for t in prange(x.size):
+        for c in range(corners.shape[0]):
+            hexa = corners[c]
+            centre, reach = _middle(hexa)
             gap = math.sqrt((x[t] - centre[0]) ** 2 + (y[t] - centre[1]) ** 2
                             + (z[t] - centre[2]) ** 2)
             order = _order(gap, reach, tolerance)
@@ -59,9 +55,24 @@ def fill_underground(tile: np.ndarray, x: np.ndarray, y: np.ndarray, z: np.ndarr
                 down, east, north = down / volume, east / volume, north / volume
             else:
                 down, east, north = _near_closing(hexa, x[t], y[t], z[t], poisson, tolerance)
-            tile[0, c, t] += down
-            tile[1, c, t] += east
-            tile[2, c, t] += north
+            for k in range(moment.shape[1]):
+                result[0, k, t] += down * moment[c, k]
+                result[1, k, t] += east * moment[c, k]
+                result[2, k, t] += north * moment[c, k]
+
+
+@njit(cache=True)
+def _middle(hexa: np.ndarray) -> tuple[np.ndarray, float]:
+    """Mean of the corners, and the distance from it to the farthest corner."""
+    centre = np.zeros(3)
+    for n in range(8):
+        for axis in range(3):
+            centre[axis] += hexa[n, axis] / 8.0
+    reach = 0.0
+    for n in range(8):
+        reach = max(reach, math.sqrt((hexa[n, 0] - centre[0]) ** 2 + (hexa[n, 1] - centre[1]) ** 2
+                                     + (hexa[n, 2] - centre[2]) ** 2))
+    return centre, reach
 
 
 @njit(cache=True)
@@ -161,12 +172,7 @@ def _near_closing(hexa: np.ndarray, x: float, y: float, z: float, poisson: float
         size -= 1
         part = stack[size].copy()
         depth = level[size]
-        centre = np.zeros(3)
-        for n in range(8):
-            centre += part[n] / 8.0
-        reach = 0.0
-        for n in range(8):
-            reach = max(reach, np.sqrt(((part[n] - centre) ** 2).sum()))
+        centre, reach = _middle(part)
         gap = math.sqrt((x - centre[0]) ** 2 + (y - centre[1]) ** 2 + (z - centre[2]) ** 2)
         order = _order(gap, reach, tolerance)
         share = volume_of(part) / total
@@ -191,9 +197,7 @@ def _as_box(hexa: np.ndarray) -> np.ndarray:
     """The upright box of the same centre, azimuth and volume (its sides as the mean edges)."""
     along = (hexa[1] - hexa[0] + hexa[2] - hexa[3] + hexa[5] - hexa[4] + hexa[6] - hexa[7]) / 4.0
     across = (hexa[3] - hexa[0] + hexa[2] - hexa[1] + hexa[7] - hexa[4] + hexa[6] - hexa[5]) / 4.0
-    centre = np.zeros(3)
-    for n in range(8):
-        centre += hexa[n] / 8.0
+    centre = _middle(hexa)[0]
     dx = math.sqrt(along[0] ** 2 + along[1] ** 2)
     dy = math.sqrt(across[0] ** 2 + across[1] ** 2)
     height = volume_of(hexa) / (dx * dy)
