@@ -13,9 +13,7 @@ from typing import Any
 
 from subside.errors import InputError
 
-__all__ = ["parse_quantity", "scale_to_si", "same_dimension", "SECONDS_PER_YEAR"]
-
-SECONDS_PER_YEAR = 365.25 * 86400.0
+__all__ = ["parse_quantity", "same_dimension", "scale_to_si"]
 
 # Exact factors: 1 darcy = 9.869233e-13 m2 (SPE Metric Standard, 1984); 1 oil barrel = 42 US gal.
 _DEFINITIONS = """
@@ -44,7 +42,8 @@ _REFUSED = {
 _ALIASES = {"bbl": "stb", "%": "percent", "kgf/cm2": "kgf_per_cm2", "D": "darcy_unit",
             "darcy": "darcy_unit", "yr": "year", "°": "degree", "degrees": "degree",
             "barrel": "stb", "per year": "1/year", "": "dimensionless", "1": "dimensionless"}
-_COMMON = "Pa, kPa, MPa, bar, barsa, psi, psia, atm, m, ft, km, mD, 1/bar, 1/psi, day, year, mm/year"
+_COMMON = ("Pa, kPa, MPa, bar, barsa, psi, psia, atm, m, ft, km, mD, 1/bar, 1/psi, day, year, "
+           "mm/year")
 _NUMBER = r"[-+]?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?"
 _EXPONENT = re.compile(r"(?<![\w.])([A-Za-z_%°µ]+)\^?(-?\d+)(?![\w.])")
 
@@ -53,7 +52,7 @@ _EXPONENT = re.compile(r"(?<![\w.])([A-Za-z_%°µ]+)\^?(-?\d+)(?![\w.])")
 def _registry() -> Any:
     import pint
 
-    registry = pint.UnitRegistry(case_sensitive=True, cache_folder=None)
+    registry: Any = pint.UnitRegistry(case_sensitive=True, cache_folder=None)
     for line in _DEFINITIONS:
         registry.define(line)
     return registry
@@ -65,7 +64,7 @@ def _tidy(unit: str) -> str:
     if text in _ALIASES:
         return _ALIASES[text]
     text = text.replace("·", "*").replace("²", "**2").replace("³", "**3").replace("^", "**")
-    words = {w for w in re.findall(r"[A-Za-z_%°µ]+", text)}
+    words = set(re.findall(r"[A-Za-z_%°µ]+", text))
     for word in words & _REFUSED.keys():
         raise InputError(f"unit '{unit}' is {_REFUSED[word]}.")
     if "**" not in text:

@@ -1,0 +1,1 @@
+"""Writing results: CF NetCDF, and the exporters behind `subside export`."""

@@ -1,0 +1,1 @@
+"""Figures of a result. Nothing is imported here, so that the package stays light."""
