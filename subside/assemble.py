@@ -78,7 +78,10 @@ def assemble(parts: Parts) -> xr.Dataset:
 def _describe(result: xr.Dataset, name: str, unit: str = "", long_name: str = "") -> None:
     known = RESULT_VARIABLES.get(name)
     if known is not None:
-        result[name].attrs.update(units=known.unit, long_name=known.long_name)
+        # places on the map are in the CRS's own unit, which need not be the metre
+        place = name.endswith(("_x", "_y"))
+        result[name].attrs.update(units=result.attrs["xy_unit"] if place else known.unit,
+                                  long_name=known.long_name)
         if known.comment:
             result[name].attrs["comment"] = known.comment
     else:
@@ -178,10 +181,13 @@ def _add_bowl(result: xr.Dataset, parts: Parts) -> None:
         _put(result, "bowl_volume_map",
              result["subsidence"].values.reshape(steps, -1).sum(axis=1) * area)
         _put(result, "bowl_volume_1cm", volume_above(result["subsidence"].values, area))
-    if parts.points.x.size:
-        values.append(parts.fields["point_down"])
-        x.append(parts.points.x)
-        y.append(parts.points.y)
+    # an anchor in the rock is not the ground: it counts only where there is nothing else
+    ground = parts.points.depth == 0.0
+    if ground.any() or not values:
+        chosen = ground if ground.any() else ~ground
+        values.append(parts.fields["point_down"][:, chosen])
+        x.append(parts.points.x[chosen])
+        y.append(parts.points.y[chosen])
     found = extremes(np.concatenate(values, axis=1), np.concatenate(x) / parts.unit,
                      np.concatenate(y) / parts.unit)
     for name, numbers in found.items():

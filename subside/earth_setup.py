@@ -32,8 +32,11 @@ def make_earth(table: EarthTable) -> EarthModel:
     for name, parameter in declared.items():
         if name in table.parameters:
             value = parameter_value(table.parameters[name], parameter, "[earth]")
+            if not isinstance(value, float):
+                raise InputError(f"[earth] {name} must be one quantity, the earth does not vary "
+                                 "from cell to cell.")
             values[name] = value
-            if parameter.datum_depth and isinstance(value, float):
+            if parameter.datum_depth:
                 values[name] = value - table.surface
                 if values[name] <= 0:
                     raise InputError(

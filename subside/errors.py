@@ -13,9 +13,11 @@ or name), and what to do.
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import contextmanager
 
-__all__ = ["CannotDo", "CheckFailed", "InputError", "PluginError", "SubsideError", "nearest"]
+__all__ = ["CannotDo", "CheckFailed", "InputError", "PluginError", "SubsideError", "located",
+           "nearest"]
 
 
 class SubsideError(Exception):
@@ -25,9 +27,21 @@ class SubsideError(Exception):
 
 
 class InputError(SubsideError):
-    """A file, key, cell or option of the user's is wrong."""
+    """A file, key, cell or option of the user's is wrong.
+
+    Parameters
+    ----------
+    message : str
+    cell : int, optional
+        Number of the cell it is about among the cells at hand (a law's arrays); whoever knows which
+        cells those are puts the place in the file into words.
+    """
 
     exit_code = 2
+
+    def __init__(self, message: str, *, cell: int | None = None) -> None:
+        super().__init__(message)
+        self.cell = cell
 
 
 class PluginError(InputError):
@@ -44,6 +58,19 @@ class CannotDo(SubsideError):
     """It could not be done here: disk, memory, a worker, or an optional package that is missing."""
 
     exit_code = 3
+
+
+@contextmanager
+def located(where: str, place: Callable[[int], str] | None = None) -> Iterator[None]:
+    """Put `where` (a file, a table) before the message of an `InputError` of the block.
+
+    `place` puts the number of a cell, where the error has one, into words.
+    """
+    try:
+        yield
+    except InputError as error:
+        at = f", {place(error.cell)}" if place is not None and error.cell is not None else ""
+        raise type(error)(f"{where}{at}: {error}") from error
 
 
 def nearest(word: str, known: Iterable[str]) -> str:

@@ -15,12 +15,12 @@ import xarray as xr
 
 from subside.assemble import Parts, assemble
 from subside.compaction.apply import Compaction, compact
-from subside.compaction.rock import Block, assign_blocks
+from subside.compaction.rock import Block, assign_blocks, place
 from subside.earth_setup import make_earth
-from subside.errors import InputError
+from subside.errors import InputError, located
 from subside.grid import open_grid
 from subside.grid.geometry import corners_of_boxes
-from subside.grid.summary import edge_depletion
+from subside.grid.summary import cut_off_text, edge_depletion
 from subside.hooks.contracts import EarthModel
 from subside.hooks.registry import registry
 from subside.observe.map import MapGrid, plan_map, round_spacing
@@ -31,6 +31,7 @@ from subside.result_file import ResultFile
 from subside.scenario import Scenario, load_scenario
 from subside.superposition.interface import Bodies, Fields, Targets
 from subside.superposition.plan import Plan, make_plan
+from subside.survey.overlay import read_survey
 from subside.timeline import Timeline, make_timeline
 
 __all__ = ["Job", "prepare", "run"]
@@ -99,38 +100,44 @@ def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
         scenario = load_scenario(scenario)
     for file in (*plugins, *(scenario.resolve(p) for p in scenario.plugins)):
         registry.load_file(Path(file))
-    earth = make_earth(scenario.earth)
-    laws = {table.law: registry.get("law", table.law, "[compaction] law")
-            for table in scenario.compaction}
-    request = read_request(scenario.output.quantities)
-    make_plan(scenario.solver.method, 0, 0, 0, 3, 1)
+    where = f"scenario '{scenario.path}'"
+    with located(where):
+        earth = make_earth(scenario.earth)
+        laws = {table.law: registry.get("law", table.law, "[compaction] law")
+                for table in scenario.compaction}
+        request = read_request(scenario.output.quantities)
+        make_plan(scenario.solver.method, 0, 0, 0, 3, 1)
     grid = scenario.grid[0]
     with progress.stage("reading", 1, "file") as advance:
         cells = open_grid(scenario.resolve(grid.file), crs=grid.crs, accept=grid.accept,
-                          surface=scenario.earth.surface)
+                          surface=scenario.earth.surface, initial_pressure=grid.initial_pressure)
         advance(1)
-    timeline = make_timeline(cells, scenario.time.start, grid.initial_pressure,
-                             scenario.output.times)
-    bodies = _bodies(timeline.cells, scenario.earth.surface)
-    _inside_valid_depths(bodies, earth, timeline.cells)
+    depth = cells["centroid"].values[:, 2] - scenario.earth.surface
     points = read_points([scenario.resolve(p.file) for p in scenario.points],
                          scenario.earth.surface, cells.attrs["xy_unit_in_m"])
-    if scenario.survey is not None and not scenario.resolve(scenario.survey.file).is_file():
-        raise InputError(f"[survey] file = '{scenario.survey.file}' does not exist beside the "
-                         "scenario.")
-    edge = edge_depletion(timeline.cells, timeline.cells["pressure"].values[0])
-    warnings = [*cells.attrs["warnings"], *timeline.warnings]
-    if edge > 0.05:
-        warnings.append(f"the depleted area is cut off by the grid: depletion on its outer edge "
-                        f"reaches {100 * edge:.0f} % of the largest, so part of the bowl is "
-                        "missing; extend the grid or add the water leg.")
-    return Job(
-        scenario=scenario, timeline=timeline,
-        blocks=assign_blocks(scenario.compaction, laws, timeline.cells),
-        earth=earth, bodies=bodies,
-        depth=cells["centroid"].values[:, 2] - scenario.earth.surface,
-        points=points, request=request, edge_depletion=edge, warnings=warnings,
-    )
+    if scenario.survey is not None:
+        read_survey(scenario.resolve(scenario.survey.file))
+    with located(where, partial(place, cells)):
+        given = grid.initial_pressure is not None
+        timeline = make_timeline(cells, scenario.time.start,
+                                 cells["initial_pressure"].values if given else None,
+                                 scenario.output.times)
+        bodies = _bodies(timeline.cells, scenario.earth.surface)
+        _inside_valid_depths(bodies, earth, timeline.cells)
+        _can_be_observed(points, earth, float(depth.max()))
+        blocks = assign_blocks(scenario.compaction, laws, timeline.cells)
+        if any(table.horizontal_release == "own" for table in scenario.compaction):
+            earth.modulus_at(depth[:1])
+        edge = edge_depletion(timeline.cells, timeline.cells["pressure"].values[0])
+        job = Job(
+            scenario=scenario, timeline=timeline, blocks=blocks, earth=earth, bodies=bodies,
+            depth=depth, points=points, request=request, edge_depletion=edge,
+            warnings=[*cells.attrs["warnings"], *timeline.warnings,
+                      *filter(None, [cut_off_text(edge)])],
+        )
+        if job.wants_map:
+            job.expected_pixels()
+    return job
 
 
 def run(
@@ -174,9 +181,10 @@ def run(
     if target is not None:
         target.refuse(overwrite)
     job = prepare(scenario, plugins, progress)
-    compaction = _compact(job, progress)
-    grid = _map(job, compaction) if job.wants_map else None
-    fields, region_fields = _superpose(job, compaction, grid, progress)
+    with located(f"scenario '{scenario.path}'"):
+        compaction = _compact(job, progress)
+        grid = _map(job, compaction) if job.wants_map else None
+        fields, region_fields = _superpose(job, compaction, grid, progress)
     result = assemble(Parts(
         scenario=job.scenario, timeline=job.timeline, blocks=job.blocks, earth=job.earth,
         bodies=job.bodies, depth=job.depth, points=job.points, request=job.request, grid=grid,
@@ -258,6 +266,17 @@ def _bodies(cells: xr.Dataset, surface: float) -> Bodies:
     return Bodies(boxes.shape[0], lambda index: corners_of_boxes(*boxes[index].T), boxes)
 
 
+def _can_be_observed(points: Points, earth: EarthModel, source_depth: float) -> None:
+    """Not every earth model answers below the surface: ask it before the long run."""
+    if not points.x.size or not points.depth.any():
+        return
+    deepest = int(points.depth.argmax())
+    with located(f"[points] '{points.name[deepest]}', {points.depth[deepest]:g} m below the ground "
+                 "or seabed (leave its depth out to put it on the surface)"):
+        earth.displacement("contraction", np.ones(1), points.depth[[deepest]],
+                           np.full(1, source_depth))
+
+
 def _inside_valid_depths(bodies: Bodies, earth: EarthModel, cells: xr.Dataset) -> None:
     shallowest, deepest = earth.valid_depths
     for start in range(0, bodies.count, 100_000):
@@ -265,8 +284,6 @@ def _inside_valid_depths(bodies: Bodies, earth: EarthModel, cells: xr.Dataset) -
         depth = bodies.corners(index)[..., 2]
         outside = (depth.max(axis=1) >= deepest) | (depth.min(axis=1) < shallowest)
         if outside.any():
-            from subside.compaction.rock import place
-
             cell = int(np.argmax(outside))
             raise InputError(
                 f"[earth] model = '{earth.name}' holds for sources between {shallowest:g} and "

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import os
+from collections.abc import Iterable
 from pathlib import Path
 
 import xarray as xr
 
-from subside.errors import InputError
+from subside.errors import CannotDo, InputError
 from subside.export.netcdf import read_result, write_result
 from subside.scenario import Scenario
 
@@ -19,18 +20,35 @@ class ResultFile:
 
     def __init__(self, path: Path, scenario: Scenario) -> None:
         self.path = path.resolve()
-        self._scenario = scenario.path.resolve()
+        self._scenario = scenario
 
     @property
     def source(self) -> str:
         """The scenario's path as seen from the result's folder, kept in the result."""
-        return Path(os.path.relpath(self._scenario, self.path.parent)).as_posix()
+        return Path(os.path.relpath(self._scenario.path.resolve(), self.path.parent)).as_posix()
 
     def refuse(self, overwrite: bool) -> None:
-        """Raise `InputError` if writing would lose something of the user's."""
+        """Raise before a long run what would stop it at the end, or lose something of the user's.
+
+        Raises
+        ------
+        InputError
+            The file is there and was not made from this scenario, or it is an input of the run.
+        CannotDo
+            It lies below something that is no folder, or a folder that may not be written.
+        """
+        for file in self._inputs():
+            if file == self.path:
+                raise InputError(f"output '{self.path}' is an input of this run; nothing was "
+                                 "written. Name another file with -o.")
         if self.path.is_dir():
             raise InputError(f"output '{self.path}' is a folder; name a file, for example "
                              f"'{self.path / 'result.nc'}'.")
+        folder = next(p for p in self.path.parents if p.exists())
+        if not folder.is_dir() or not os.access(folder, os.W_OK | os.X_OK):
+            reason = "may not be written" if folder.is_dir() else "is a file, not a folder"
+            raise CannotDo(f"output '{self.path}' cannot be written: '{folder}' {reason}. Name "
+                           "another place with -o.")
         if not self.path.exists() or overwrite:
             return
         try:
@@ -42,6 +60,13 @@ class ResultFile:
         origin = f"made from '{made_from}'" if made_from else "not a result of subside"
         raise InputError(f"output '{self.path}' exists and is {origin}; nothing was written. Name "
                          "another file with -o, or allow it with --overwrite.")
+
+    def _inputs(self) -> Iterable[Path]:
+        scenario = self._scenario
+        files = [t.file for t in scenario.grid] + [t.file for t in scenario.points]
+        if scenario.survey is not None:
+            files.append(scenario.survey.file)
+        return (scenario.path.resolve(), *map(scenario.resolve, files))
 
     def write(self, result: xr.Dataset) -> None:
         """Write the result whole or not at all."""

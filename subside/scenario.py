@@ -14,7 +14,15 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, ValidationInfo
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    FiniteFloat,
+    ValidationError,
+    ValidationInfo,
+)
 
 from subside.errors import InputError, nearest
 from subside.params import Parameter
@@ -68,6 +76,8 @@ def _date(value: object, info: ValidationInfo) -> dt.datetime:
                              "write YYYY-MM-DD, for example \"1990-01-01\".") from None
     if parsed.tzinfo is not None:
         raise InputError(f"{info.field_name} = {value!r} has a time zone; leave it out.")
+    if not 1700 <= parsed.year <= 2250:
+        raise InputError(f"{info.field_name} = {str(value)!r} lies outside the years 1700 to 2250.")
     return parsed
 
 
@@ -90,7 +100,7 @@ class GridTable(_Table):
     file: str
     name: str = "main"
     crs: str | None = None
-    initial_pressure: Any = "first"
+    initial_pressure: Any = None
     accept: list[str] = Field(default_factory=list)
 
 
@@ -129,7 +139,7 @@ class MapTable(_Table):
     """`[map]`: the regular north-up map; lengths in metres, bounds in the CRS's own unit."""
 
     spacing: Annotated[float, _quantity("m", "[map] spacing", positive=True)] | None = None
-    bounds: tuple[float, float, float, float] | None = None
+    bounds: tuple[FiniteFloat, FiniteFloat, FiniteFloat, FiniteFloat] | None = None
 
 
 class PointsTable(_Table):
@@ -216,6 +226,9 @@ def load_scenario(path: str | Path) -> Scenario:
     for key in ("grid", "compaction", "points"):
         if isinstance(data.get(key), dict):
             data[key] = [data[key]]
+    earth = data.get("earth")
+    if isinstance(earth, dict) and isinstance(earth.get("layer"), dict):
+        earth["layer"] = [earth["layer"]]
     try:
         _File.model_validate(data)
         scenario = Scenario.model_validate(

@@ -56,12 +56,12 @@ point,x [m],y [m],date,kind,value [mm],sigma [mm]
 B1,500500,5900500,2000-06-01,height,1520.0,2.0
 B2,501500,5901000,2000-06-01,height,1834.0,2.0
 B3,503000,5902500,2000-06-01,height,2011.0,2.0
-B1,500500,5900500,2006-06-01,height,1481.0,2.0
-B2,501500,5901000,2006-06-01,height,1797.5,2.0
-B3,503000,5902500,2006-06-01,height,1988.0,2.0
-B1,500500,5900500,2012-06-01,height,1462.5,2.0
-B2,501500,5901000,2012-06-01,height,1780.0,2.0
-B3,503000,5902500,2012-06-01,height,1977.0,2.0
+B1,500500,5900500,2006-06-01,height,1508.6,2.0
+B2,501500,5901000,2006-06-01,height,1825.5,2.0
+B3,503000,5902500,2006-06-01,height,2004.1,2.0
+B1,500500,5900500,2012-06-01,height,1503.9,2.0
+B2,501500,5901000,2012-06-01,height,1819.0,2.0
+B3,503000,5902500,2012-06-01,height,2003.8,2.0
 """
 
 
@@ -95,16 +95,16 @@ def write_starter(folder: Path) -> list[Path]:
 
 def _write_grid(path: Path) -> None:
     layers, rows, columns = 3, 16, 20
-    size, thickness = 250.0, 15.0
-    x = 498_000.0 + size * np.arange(columns)
-    y = 5_899_000.0 + size * np.arange(rows)
+    size, thickness = 400.0, 30.0
+    x = 496_200.0 + size * np.arange(columns)
+    y = 5_898_000.0 + size * np.arange(rows)
     grid_x, grid_y = np.meshgrid(x, y)
-    dome = 2800.0 + ((grid_x - x.mean()) ** 2 + (grid_y - y.mean()) ** 2) / 1e5
+    dome = 2800.0 + ((grid_x - x.mean()) ** 2 + (grid_y - y.mean()) ** 2) / 2e5
     top = dome[None] + thickness * np.arange(layers)[:, None, None]
     years = np.arange(0, 21)
     region = np.where(grid_y > y.mean(), 1, 2)
     final = np.where(region == 1, 180.0, 120.0)
-    inside = np.exp(-(((grid_x - x.mean()) / 1200.0) ** 4 + ((grid_y - y.mean()) / 1000.0) ** 4))
+    inside = np.exp(-(((grid_x - x.mean()) / 2400.0) ** 4 + ((grid_y - y.mean()) / 1900.0) ** 4))
     initial = 0.1 * (top + 0.5 * thickness) + 30.0
     decline = 1.0 - np.exp(-years / 7.0)
     pressure = initial[None] - decline[:, None, None, None] * (final * inside)[None, None]

@@ -53,7 +53,7 @@ def read_table(path: Path, columns: Sequence[Column], what: str) -> dict[str, np
     Returns
     -------
     dict of str to array
-        One entry for each column of the file.
+        One entry for each column of the file, and `line`, the line of the file each row ends on.
 
     Raises
     ------
@@ -63,7 +63,8 @@ def read_table(path: Path, columns: Sequence[Column], what: str) -> dict[str, np
     known = {c.name: c for c in columns}
     try:
         with path.open(encoding="utf-8-sig", newline="") as file:
-            rows = [row for row in csv.reader(_bounded(file, path)) if any(map(str.strip, row))]
+            reader = csv.reader(_bounded(file, path))
+            lines = [(reader.line_num, row) for row in reader if any(map(str.strip, row))]
     except FileNotFoundError:
         raise InputError(f"{what} file '{path}' does not exist.") from None
     except UnicodeDecodeError:
@@ -73,10 +74,10 @@ def read_table(path: Path, columns: Sequence[Column], what: str) -> dict[str, np
         raise InputError(f"{what} file '{path}' is not CSV: {error}.") from None
     except OSError as error:
         raise InputError(f"{what} file '{path}' cannot be read: {error.strerror}.") from None
-    if not rows:
+    if not lines:
         raise InputError(f"{what} file '{path}' is empty; its first line names the columns: "
                          f"{', '.join(known)}.")
-    headings = [_heading(cell, known, path, what) for cell in rows[0]]
+    headings = [_heading(cell, known, path, what) for cell in lines[0][1]]
     names = [name for name, _ in headings]
     for column in columns:
         if column.required and column.name not in names:
@@ -85,16 +86,19 @@ def read_table(path: Path, columns: Sequence[Column], what: str) -> dict[str, np
     if len(set(names)) < len(names):
         raise InputError(f"{what} file '{path}' has two columns of one name; its columns are "
                          f"{', '.join(names)}.")
+    if len(lines) == 1:
+        raise InputError(f"{what} file '{path}' has headings and no rows below them; add rows, or "
+                         "leave the file out.")
     table: dict[str, list] = {name: [] for name in names}
-    for number, row in enumerate(rows[1:], start=2):
+    for number, row in lines[1:]:
         if len(row) != len(names):
-            raise InputError(f"{what} file '{path}', row {number}: it has {len(row)} values for "
+            raise InputError(f"{what} file '{path}', line {number}: it has {len(row)} values for "
                              f"{len(names)} columns ({', '.join(names)}).")
         for (name, factor), cell in zip(headings, row, strict=True):
-            table[name].append(_value(cell, known[name], factor, f"{what} file '{path}', row "
+            table[name].append(_value(cell, known[name], factor, f"{what} file '{path}', line "
                                       f"{number}, column '{name}'"))
     return {n: np.array(v, dtype=str if known[n].unit is None else float)
-            for n, v in table.items()}
+            for n, v in table.items()} | {"line": np.array([number for number, _ in lines[1:]])}
 
 
 def _bounded(file, path):  # type: ignore[no-untyped-def]
@@ -110,8 +114,9 @@ def _heading(cell: str, known: dict[str, Column], path: Path, what: str) -> tupl
     match = _HEADING.fullmatch(cell)
     name = match[1] if match else cell.strip()
     if name not in known:
+        separator = " Separate columns with commas." if ";" in name or "\t" in name else ""
         raise InputError(f"{what} file '{path}' has an unknown column '{name}'."
-                         + nearest(name, known))
+                         + separator + nearest(name, known))
     column = known[name]
     unit = match[2] if match else None
     if column.unit is None:
@@ -129,6 +134,8 @@ def _heading(cell: str, known: dict[str, Column], path: Path, what: str) -> tupl
 def _value(cell: str, column: Column, scale: tuple[float, float], where: str) -> str | float:
     text = cell.strip()
     if column.unit is None:
+        if not text and column.required:
+            raise InputError(f"{where}: it is empty; every row needs one.")
         return text
     if not text and not column.required:
         return float("nan")

@@ -8,13 +8,12 @@ from __future__ import annotations
 
 import datetime as dt
 from dataclasses import dataclass
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 import xarray as xr
 
 from subside.errors import InputError
-from subside.units import parse_quantity, same_dimension
 
 __all__ = ["TimeAxis", "Timeline", "make_timeline"]
 
@@ -62,7 +61,7 @@ class Timeline:
     warnings: tuple[str, ...] = ()
 
 
-def make_timeline(cells: xr.Dataset, start: dt.datetime | None, initial_pressure: Any,
+def make_timeline(cells: xr.Dataset, start: dt.datetime | None, initial: np.ndarray | None,
                   times: Literal["all"] | list[dt.datetime]) -> Timeline:
     """Bring start, initial pressure and output dates together.
 
@@ -72,7 +71,8 @@ def make_timeline(cells: xr.Dataset, start: dt.datetime | None, initial_pressure
         Cell dataset with `pressure(time, cell)` in Pa.
     start : datetime or None
         `[time] start`; None: the first pressure step.
-    initial_pressure : "first", quantity, or {"field": name}
+    initial : array (cell,) or None
+        Absolute pressure at the start, Pa, where the scenario gives one.
     times : "all" or list of datetime
         Output dates; "all": the start and every pressure date after it.
 
@@ -85,22 +85,26 @@ def make_timeline(cells: xr.Dataset, start: dt.datetime | None, initial_pressure
     """
     steps = cells["time"].values.astype("datetime64[s]")
     begin = np.datetime64(start, "s") if start is not None else steps[0]
-    initial = _initial(cells, initial_pressure)
     warnings: list[str] = []
     if begin < steps[0]:
         if initial is None:
             raise InputError(
-                f"[time] start = {begin} lies before the first pressure step ({steps[0]}), so the "
-                "initial pressure is not known; give [grid] initial_pressure as a quantity or "
-                "{ field = \"initial_pressure\" }, or leave start out."
+                f"[time] start = {_day(begin)} lies before the first pressure step "
+                f"({_day(steps[0])}), so the initial pressure is not known; give [grid] "
+                "initial_pressure as \"first\" (as at the first step), a quantity such as "
+                "\"350 bar\" or { field = \"initial_pressure\" }, or leave start out."
             )
         cells = xr.concat([cells.isel(time=[0]).assign_coords(time=[begin]), cells], dim="time",
                           data_vars="minimal", coords="minimal", compat="override")
         cells["pressure"].values[0] = initial
         known = np.concatenate([[begin], steps])
+    elif steps.size == 1 and start is None:
+        raise InputError(f"the grid has one pressure step ({_day(steps[0])}), and compaction is "
+                         "the answer to a change; give more steps, or a [time] start before it and "
+                         "[grid] initial_pressure.")
     elif begin >= steps[-1]:
-        raise InputError(f"[time] start = {begin} is not before the last pressure step "
-                         f"({steps[-1]}); nothing would happen.")
+        raise InputError(f"[time] start = {_day(begin)} is not before the last pressure step "
+                         f"({_day(steps[-1])}); nothing would happen. Give an earlier start.")
     else:
         if begin > steps[0]:
             warnings.append(f"the start ({_day(begin)}) is after the first pressure step "
@@ -113,34 +117,6 @@ def make_timeline(cells: xr.Dataset, start: dt.datetime | None, initial_pressure
     axis = TimeAxis(pressure=(known - origin) / np.timedelta64(1, "s"),
                     output=(dates - origin) / np.timedelta64(1, "s"))
     return Timeline(origin, dates, axis, cells, tuple(warnings))
-
-
-def _initial(cells: xr.Dataset, spec: Any) -> np.ndarray | None:
-    if spec == "first":
-        return None
-    if isinstance(spec, dict) and set(spec) == {"field"}:
-        name = str(spec["field"])
-        if name not in cells:
-            raise InputError(f"[grid] initial_pressure: the grid has no field '{name}'.")
-        if not same_dimension(str(cells[name].attrs.get("units", "")), "Pa"):
-            raise InputError(f"[grid] initial_pressure: the grid's field '{name}' has units "
-                             f"'{cells[name].attrs.get('units', '')}', a pressure is expected.")
-        values = np.asarray(cells[name].values, dtype=float)
-        if not np.isfinite(values).all():
-            raise InputError(f"[grid] initial_pressure: the field '{name}' is missing in "
-                             f"{int((~np.isfinite(values)).sum())} active cells.")
-    elif isinstance(spec, str):
-        number = parse_quantity(spec, "Pa", name="[grid] initial_pressure")
-        values = np.full(cells.sizes["cell"], number)
-    elif isinstance(spec, (int, float)) and not isinstance(spec, bool):
-        values = np.full(cells.sizes["cell"], float(spec))
-    else:
-        raise InputError(f"[grid] initial_pressure = {spec!r} is none of: \"first\", a quantity "
-                         "such as \"350 bar\", { field = \"initial_pressure\" }.")
-    if (values <= 0).any():
-        raise InputError(f"[grid] initial_pressure: {float(values.min()) / 1e5:g} bar is not a "
-                         "pressure; it must be above zero.")
-    return values
 
 
 def _from_start(cells: xr.Dataset, steps: np.ndarray, begin: np.datetime64) -> tuple[
@@ -168,10 +144,9 @@ def _same(initial: np.ndarray, first: np.ndarray, begin: np.datetime64) -> None:
     if gap[worst] > 1e-5 * first[worst]:
         raise InputError(
             f"[grid] initial_pressure differs from the pressure on the start date {_day(begin)} by "
-            f"up to {gap[worst] / 1e5:.4g} bar (active cell {worst}: "
-            f"{initial[worst] / 1e5:.6g} against {first[worst] / 1e5:.6g} bar), a jump in no time; "
-            "set [time] start before the first step, or use initial_pressure = \"first\"."
-        )
+            f"up to {gap[worst] / 1e5:.4g} bar ({initial[worst] / 1e5:.6g} against "
+            f"{first[worst] / 1e5:.6g} bar), a jump in no time; set [time] start before the first "
+            "step, or leave initial_pressure out.", cell=worst)
 
 
 def _dates(times: list[dt.datetime], begin: np.datetime64, last: np.datetime64) -> np.ndarray:
@@ -188,4 +163,4 @@ def _dates(times: list[dt.datetime], begin: np.datetime64, last: np.datetime64) 
 
 
 def _day(date: np.datetime64) -> str:
-    return str(np.datetime64(date, "D"))
+    return str(date.astype("datetime64[D]"))

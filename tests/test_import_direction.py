@@ -29,7 +29,10 @@ may (they are one idea cut in pieces)."""
 
 SIBLINGS_MAY = [{"errors", "units", "names", "params", "progress"}, {"scenario", "tables"}]
 FACE = {"__init__", "__main__"}
-NUMBERS_ONLY = {"earth": {"numpy", "scipy", "numba"}, "superposition": {"numpy", "scipy", "numba"}}
+NUMBERS_ONLY = {
+    "earth": {"numpy", "scipy", "numba"},
+    "superposition": {"numpy", "scipy", "numba", "threadpoolctl"},
+}
 
 
 def _level(part: str) -> int:

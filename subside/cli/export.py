@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 import click
@@ -36,7 +38,27 @@ def command(result_file: Path, kind: str, folder: Path, variables: tuple[str, ..
         registry.load_file(file)
     exporter = registry.get("exporter", kind, "--to")()
     result = read_result(result_file)
-    folder.mkdir(parents=True, exist_ok=True)
-    files = exporter.export(result, folder, overwrite, variables or None)
+    with _made(folder):
+        files = exporter.export(result, folder, overwrite, variables or None)
     if not quiet:
         click.echo(f"{len(files)} files in {folder}")
+
+
+@contextmanager
+def _made(folder: Path) -> Iterator[None]:
+    """Make a folder with its parents; take away again what stayed empty after an error."""
+    from subside.errors import CannotDo
+
+    new = [p for p in (folder, *folder.parents) if not p.exists()]
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise CannotDo(f"folder '{folder}' cannot be made: {error.strerror or error}; name another "
+                       "with -o.") from None
+    try:
+        yield
+    except BaseException:
+        for path in new:
+            with suppress(OSError):
+                path.rmdir()
+        raise

@@ -14,7 +14,7 @@ from typing import Any
 
 import click
 
-from subside.errors import SubsideError
+from subside.errors import SubsideError, nearest
 
 __all__ = ["cli", "main"]
 
@@ -35,6 +35,12 @@ class _Commands(click.Group):
             return None
         command: click.Command = import_module(_COMMANDS[cmd_name]).command
         return command
+
+    def resolve_command(self, ctx: click.Context, args: list[str]) -> Any:
+        if args and args[0] not in _COMMANDS:
+            raise click.UsageError(f"no command is called '{args[0]}'."
+                                   + nearest(args[0], _COMMANDS), ctx)
+        return super().resolve_command(ctx, args)
 
 
 @click.command(cls=_Commands, context_settings={"help_option_names": ["-h", "--help"]})
@@ -69,7 +75,9 @@ def _guarded(job: Callable[[], Any], debug: bool) -> int:
         error.show()
         return 2
     except click.ClickException as error:
-        error.show()
+        context = getattr(error, "ctx", None)
+        see = f" See '{context.command_path} --help'." if context is not None else ""
+        _say(error.format_message() + see, debug)
         return 2
     except click.Abort:
         _say("stopped by the user; nothing was written under a final name.", debug)
@@ -81,8 +89,8 @@ def _guarded(job: Callable[[], Any], debug: bool) -> int:
         _say(f"memory ran out ({error}); use a coarser map, fewer output dates, or a machine with "
              "more memory.", debug)
         return 3
-    except BrokenPipeError:
-        return 0
+    except SystemExit:  # how click ends when whoever reads the output has gone
+        return 3
     except Exception as error:
         _say(f"unforeseen {type(error).__name__}: {error}. This is a defect of subside; run again "
              "with --debug and report what it prints.", debug)

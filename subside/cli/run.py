@@ -10,6 +10,7 @@ import click
 from subside.cli.options import bars, common, json_option, note_warnings, plugin_option, print_json
 
 if TYPE_CHECKING:
+    import pandas as pd
     import xarray as xr
 
     from subside.scenario import Scenario
@@ -39,12 +40,14 @@ def command(scenario_file: Path, output: Path | None, overwrite: bool, no_figure
     from subside.pipeline import run
     from subside.result_file import ResultFile
     from subside.scenario import load_scenario
+    from subside.survey.overlay import read_survey
 
     note_warnings()
     scenario = load_scenario(scenario_file)
     path = result_path(scenario, output)
     if survey is None and scenario.survey is not None:
         survey = scenario.resolve(scenario.survey.file)
+    measured = read_survey(survey) if survey is not None else None
     target = ResultFile(path, scenario)
     target.refuse(overwrite)
     stem = path.with_suffix("")
@@ -58,7 +61,7 @@ def command(scenario_file: Path, output: Path | None, overwrite: bool, no_figure
         files = [path]
         if not no_figures:
             with progress.stage("figures", 1, "set") as advance:
-                files += _figures(result, stem, survey)
+                files += _figures(result, stem, measured)
                 advance(1)
     if as_json:
         print_json(facts_of(result) | {"files": [str(f) for f in files]})
@@ -75,12 +78,9 @@ def result_path(scenario: Scenario, output: Path | None) -> Path:
     return scenario.path.with_suffix(".nc")
 
 
-def _figures(result: xr.Dataset, stem: Path, survey: Path | None) -> list[Path]:
+def _figures(result: xr.Dataset, stem: Path, survey: pd.DataFrame | None) -> list[Path]:
     from subside.report.figures import save_figures
+    from subside.survey.overlay import measured_subsidence
 
-    measured = None
-    if survey is not None:
-        from subside.survey.overlay import measured_subsidence
-
-        measured = measured_subsidence(survey, result)
+    measured = measured_subsidence(survey, result) if survey is not None else None
     return save_figures(result, stem, survey=measured, overwrite=True)

@@ -21,17 +21,14 @@ from dataclasses import dataclass, field
 import numpy as np
 import xarray as xr
 
-from subside.api import EarthModel, History, InputError, Parameter
+from subside.api import EarthModel, History, InputError
 from subside.compaction.rock import Block, field_of_cells, place
-from subside.scenario import parameter_value
 from subside.timeline import TimeAxis
 
 __all__ = ["Compaction", "compact"]
 
 _CELLS_AT_ONCE = 50_000
 _STRAIN_ALARM = 0.005
-_RELEASE = Parameter("horizontal_release", "1", "horizontal stress released over that of a "
-                     "reservoir as stiff as its host", minimum=0.0, example="1.0")
 
 
 @dataclass
@@ -106,7 +103,8 @@ def compact(
         ratio = np.ones(cells)
         for block in blocks:
             if block.table.apply_net_to_gross:
-                ratio[block.cells] = dataset["net_to_gross"].values[block.cells]
+                ratio[block.cells] = field_of_cells(
+                    dataset, "net_to_gross", "1", f"{block.where} apply_net_to_gross", block.cells)
         net *= ratio
     strain = np.zeros((nt, cells))
     contraction = np.zeros((nt, cells))
@@ -121,7 +119,7 @@ def compact(
             strain[:, index] = law_strain[keep]
             drop_stress = history.stress_rise[keep]
             contraction[:, index] = net[index] * _released(
-                block, part, law_strain[keep], drop_stress, earth, depth[index], dataset)
+                block, part, law_strain[keep], drop_stress, earth, depth[index])
             progress(index.size)
         warnings += _mismatch(block, strain, pressure, earth, depth)
     _alarm(strain, dataset, warnings)
@@ -141,8 +139,8 @@ def _history(dataset: xr.Dataset, pressure: np.ndarray, axis: TimeAxis, block: B
     biot = block.rock(part).biot
     fields: dict[str, np.ndarray] = {}
     for name in block.law.needs:
-        values = field_of_cells(dataset, name, dataset[name].attrs.get("units", "1")
-                                if name in dataset else "1", f"law '{block.law.name}'", index)
+        values = field_of_cells(dataset, name, None, f"{block.where}: law '{block.law.name}'",
+                                index)
         if values.ndim > 1:
             values = _linear_in_time(axis.pressure, values, time)
         fields[name] = values
@@ -162,7 +160,8 @@ def _linear_in_time(known: np.ndarray, values: np.ndarray, wanted: np.ndarray) -
 
 
 def _strain_of(block: Block, history: History, part: slice, dataset: xr.Dataset) -> np.ndarray:
-    strain = np.asarray(block.law.strain(history, block.rock(part)))
+    with block.speaking(part):
+        strain = np.asarray(block.law.strain(history, block.rock(part)))
     expected = history.pressure_drop.shape
     if strain.shape != expected:
         raise InputError(f"{block.where}: law '{block.law.name}' returned strain of shape "
@@ -175,21 +174,16 @@ def _strain_of(block: Block, history: History, part: slice, dataset: xr.Dataset)
 
 
 def _released(block: Block, part: slice, strain: np.ndarray, stress_rise: np.ndarray,
-              earth: EarthModel, depth: np.ndarray, dataset: xr.Dataset) -> np.ndarray:
+              earth: EarthModel, depth: np.ndarray) -> np.ndarray:
     """g e, the strain of the contraction part."""
-    release = block.table.horizontal_release
+    release = block.release
+    if isinstance(release, np.ndarray):
+        return np.asarray(strain * release[part])
     if release == "matched":
         return strain
     if release == "own":
         return np.asarray(stress_rise / earth.modulus_at(depth))
-    value = parameter_value(release, _RELEASE, block.where,
-                            [str(r) for r in dataset["region_name"].values]) \
-        if not isinstance(release, str) else None
-    if value is None:
-        raise InputError(f"{block.where} horizontal_release = {release!r} is none of: \"matched\", "
-                         "\"own\", a number, { field = NAME }.")
-    return np.asarray(strain * block.expand(_RELEASE, value)[part]) \
-        if not isinstance(value, (int, float)) else strain * value
+    return strain * release
 
 
 def _mismatch(block: Block, strain: np.ndarray, pressure: np.ndarray, earth: EarthModel,
@@ -219,5 +213,6 @@ def _alarm(strain: np.ndarray, dataset: xr.Dataset, warnings: list[str]) -> None
     largest = float(strain.max(initial=0.0))
     if largest > _STRAIN_ALARM:
         cell = int(np.unravel_index(strain.argmax(), strain.shape)[1])
-        warnings.append(f"strain reaches {100 * largest:.2g} % in {place(dataset, cell)}; sandstone "
-                        "normally stays below 0.5 %: check the compressibility and its unit.")
+        warnings.append(f"strain reaches {100 * largest:.2g} % in {place(dataset, cell)}; "
+                        "sandstone normally stays below 0.5 %: check the compressibility and its "
+                        "unit.")

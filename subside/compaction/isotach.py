@@ -100,7 +100,8 @@ class Isotach(Law):
     def check(self, rock: Rock) -> None:
         """Raise `InputError` where the direct part exceeds the whole, or is equal to it."""
         aged = rock.reference_compressibility * _geological_factor(rock)
-        excess = np.atleast_1d(rock.direct_compressibility >= aged)
+        too_much = rock.direct_compressibility >= aged
+        excess = np.atleast_1d(too_much)
         if excess.any():
             first = int(np.flatnonzero(excess)[0])
             direct, at_rate = (_per_cell(value, excess.size)[first] * 1e5
@@ -109,7 +110,8 @@ class Isotach(Law):
                 f"direct_compressibility = {direct:g} 1/bar is not below the compressibility "
                 f"at the geological rate, reference_compressibility x (geological_stress_rate / "
                 f"reference_stress_rate)^-rate_exponent = {at_rate:g} 1/bar: nothing would be left "
-                "to creep; lower the one or raise the other.")
+                "to creep; lower the one or raise the other.",
+                cell=first if np.ndim(too_much) else None)
 
 
 def _geological_factor(rock: Rock) -> Any:
@@ -159,11 +161,11 @@ def _check_stress(stress: np.ndarray, rise: np.ndarray, time: np.ndarray) -> Non
     if stress.size and not stress.min() > 0.0:
         now, cell = (int(index[0]) for index in np.nonzero(~(stress > 0.0)))
         raise InputError(
-            f"law 'isotach', cell {cell} of its block: the vertical effective stress is "
+            "the vertical effective stress is "
             f"{stress[now, cell] / 1e5:g} bar {time[now] / _YEAR:g} years after the start "
             f"(initial_effective_stress = {(stress[now, cell] - rise[now, cell]) / 1e5:g} bar, "
             f"change {rise[now, cell] / 1e5:+g} bar), and the law needs it above zero; raise "
-            "initial_effective_stress or check the pressure there.")
+            "initial_effective_stress or check the pressure there.", cell=cell)
 
 
 @njit(parallel=True, cache=True, error_model="numpy")

@@ -80,5 +80,6 @@ def refuse(bad: Number, message: Callable[[Callable[[Number], float]], str]) -> 
     cells = np.flatnonzero(np.atleast_1d(bad))
     if cells.size:
         first = int(cells[0])
-        raise InputError(message(
-            lambda value: float(np.broadcast_to(value, np.atleast_1d(bad).shape)[first])))
+        raise InputError(
+            message(lambda value: float(np.broadcast_to(value, np.atleast_1d(bad).shape)[first])),
+            cell=first if np.ndim(bad) else None)

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from types import SimpleNamespace
 from typing import Any
 
@@ -10,11 +11,14 @@ import numpy as np
 import xarray as xr
 
 from subside.api import COMMON_LAW_PARAMETERS, InputError, Law, Parameter, Rock
-from subside.errors import nearest
+from subside.errors import PluginError, located, nearest
 from subside.scenario import ByRegion, CellField, CompactionTable, RockValue, parameter_value
-from subside.units import same_dimension
+from subside.units import same_dimension, scale_to_si
 
-__all__ = ["Block", "assign_blocks", "field_of_cells"]
+__all__ = ["Block", "assign_blocks", "field_of_cells", "place"]
+
+_RELEASE = Parameter("horizontal_release", "1", "horizontal stress released over that of a "
+                     "reservoir as stiff as its host", minimum=0.0, example="1.0")
 
 
 class Block:
@@ -24,6 +28,8 @@ class Block:
     ----------
     cells : array of int (n,)
         Which cells of the dataset follow this law.
+    release : "matched", "own", float or array (n,)
+        Horizontal release of its cells.
     """
 
     def __init__(self, table: CompactionTable, law: Law, where: str, cells: np.ndarray,
@@ -50,9 +56,29 @@ class Block:
                                  f"\"{parameter.example}\".")
             else:
                 self.values[name] = parameter.default
-        self._arrays = {name: self.expand(declared[name], value)
+        self._arrays = {name: self._expand(declared[name], value)
                         for name, value in self.values.items()}
-        law.check(self.rock(slice(None)))
+        self.release = self._release(regions)
+        for name in law.needs:
+            field_of_cells(dataset, name, None, f"{where}: law '{law.name}'", cells)
+        with self.speaking(slice(None)):
+            law.check(self.rock(slice(None)))
+
+    @contextmanager
+    def speaking(self, part: slice) -> Iterator[None]:
+        """Errors of the law, with this block and the place in the grid put before them.
+
+        `part` says which of the block's cells the law was given.
+        """
+        try:
+            with located(self.where, lambda n: place(self._dataset, int(self.cells[part][n]))):
+                yield
+        except InputError:
+            raise
+        except Exception as error:
+            raise PluginError(f"{self.where}: law '{self.law.name}' failed with "
+                              f"{type(error).__name__}: {error}. This is a fault of the law; "
+                              "run again with --debug and tell its author.") from error
 
     def rock(self, part: slice) -> Rock:
         """Parameters of a part of the block's cells: floats, or arrays (cell,), or None."""
@@ -65,7 +91,17 @@ class Block:
         """One parameter for all cells of the block."""
         return self._arrays[name]
 
-    def expand(self, parameter: Parameter, value: RockValue | None) -> Any:
+    def _release(self, regions: list[str]) -> Any:
+        raw = self.table.horizontal_release
+        if raw in ("matched", "own"):
+            return raw
+        if isinstance(raw, str) and raw.strip()[:1].isalpha():
+            raise InputError(f"{self.where} horizontal_release = {raw!r} is none of: \"matched\", "
+                             "\"own\", a number, { field = NAME }."
+                             + nearest(raw, ("matched", "own")))
+        return self._expand(_RELEASE, parameter_value(raw, _RELEASE, self.where, regions))
+
+    def _expand(self, parameter: Parameter, value: RockValue | None) -> Any:
         """A parameter's value for the cells of the block: a float, an array (cell,), or None."""
         if value is None or isinstance(value, (int, float)):
             return value
@@ -100,9 +136,12 @@ def _read_only(values: np.ndarray) -> np.ndarray:
     return view
 
 
-def field_of_cells(dataset: xr.Dataset, name: str, si_unit: str, where: str,
+def field_of_cells(dataset: xr.Dataset, name: str, si_unit: str | None, where: str,
                    cells: np.ndarray) -> np.ndarray:
-    """A grid field for some cells, SI: (n,) or (time, n).
+    """A grid field for some cells: (n,) or (time, n).
+
+    `si_unit` is the unit it comes back in; None: the SI unit of whatever it measures (a law that
+    asks for a field knows what it needs).
 
     Raises
     ------
@@ -117,26 +156,32 @@ def field_of_cells(dataset: xr.Dataset, name: str, si_unit: str, where: str,
     variable = dataset[name]
     unit = variable.attrs.get("units")
     if unit is None:
-        raise InputError(f"{where}: the grid's field '{name}' has no units attribute; give it one, "
-                         f"for example '{si_unit}'.")
+        problem = variable.attrs.get("units_problem", "it has no units attribute")
+        example = f"for example '{si_unit}'" if si_unit else "'1' for a plain number"
+        raise InputError(f"{where}: the grid's field '{name}' cannot be used, {problem}; give it "
+                         f"units, {example}.")
+    si_unit = si_unit or str(unit)
     if not same_dimension(str(unit), si_unit):
         raise InputError(f"{where}: the grid's field '{name}' is in '{unit}', which is not a unit "
                          f"of this parameter (such as '{si_unit}').")
+    factor, offset = scale_to_si(str(unit), si_unit)
     values = np.asarray(variable.transpose(..., "cell").values, dtype=float)[..., cells]
+    values = values * factor + offset
     bad = ~np.isfinite(values)
     if bad.any():
-        first = int(cells[np.nonzero(bad.any(axis=0) if bad.ndim > 1 else bad)[0][0]])
-        raise InputError(f"{where}: the grid's field '{name}' is missing in {int(bad.sum())} active "
-                         f"cells, first {place(dataset, first)}; fill the gaps or mark the cells "
+        wrong = cells[bad.any(axis=0) if bad.ndim > 1 else bad]
+        count = f"{wrong.size} active cell{'s' if wrong.size > 1 else ''}"
+        raise InputError(f"{where}: the grid's field '{name}' has no value in {count}, first "
+                         f"{place(dataset, int(wrong[0]))}; fill the gaps or mark the cells "
                          "inactive.")
     return values
 
 
 def place(dataset: xr.Dataset, cell: int) -> str:
-    """Where a cell stands in its file: ``(k=1, j=2, i=3)`` or ``cell 17``."""
-    if "k" in dataset:
-        return "(" + ", ".join(f"{n}={int(dataset[n].values[cell])}" for n in "kji") + ")"
-    return f"cell {cell}"
+    """Where a cell stands in its file: ``(k=1, j=2, i=3)`` or ``(cell=17)``."""
+    names = "kji" if "k" in dataset else ("cell_id",)
+    return "(" + ", ".join(f"{n.removesuffix('_id')}={dataset[n].values[cell]}"
+                           for n in names) + ")"
 
 
 def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any]],
@@ -183,9 +228,10 @@ def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any
     if rest is None:
         orphan = [names[r] for r in present if owner[r] < 0]
         if orphan:
-            raise InputError(f"region '{orphan[0]}' ({int((region == names.index(orphan[0])).sum())}"
-                             " cells) belongs to no [[compaction]] table; add it to one, or leave "
-                             "'regions' out of one table to take the rest.")
+            count = int((region == names.index(orphan[0])).sum())
+            raise InputError(f"region '{orphan[0]}' ({count} cells) belongs to no "
+                             "[[compaction]] table; add it to one, or leave 'regions' out of one "
+                             "table to take the rest.")
     else:
         owner[owner < 0] = rest
     blocks = []

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from subside.errors import CannotDo, InputError
+from subside.errors import CannotDo, InputError, located
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -62,7 +62,8 @@ def open_grid(
     from subside.grid.findings import Findings
 
     path = Path(path)
-    words = check_accept(accept)
+    with located(str(path)):
+        words = check_accept(accept)
     reader = _reader_of(path)
     if fields is not None:
         extra = initial_pressure.values() if isinstance(initial_pressure, Mapping) else ()
@@ -105,8 +106,9 @@ def _set_initial(cells: xr.Dataset, wanted: float | str | Mapping[str, str]) -> 
     known = CELL_VARIABLES["initial_pressure"]
     if isinstance(wanted, Mapping):
         if set(wanted) != {"field"}:
-            raise InputError(f"initial_pressure = {dict(wanted)!r}: write \"first\", a quantity "
-                             "such as \"350 bar\", or { field = \"initial_pressure\" }.")
+            raise InputError(f"{cells.attrs['source_file']}: initial_pressure = {dict(wanted)!r}: "
+                             "write \"first\", a quantity such as \"350 bar\", or "
+                             "{ field = \"initial_pressure\" }.")
         name = wanted["field"]
         values = require_field(cells, name, "Pa", "initial_pressure").values
         if values.ndim != 1:
@@ -115,8 +117,9 @@ def _set_initial(cells: xr.Dataset, wanted: float | str | Mapping[str, str]) -> 
     elif wanted == "first":
         values = cells["pressure"].values[0].copy()
     else:
-        values = np.full(cells.sizes["cell"],
-                         parse_quantity(wanted, "Pa", name="initial_pressure"))
+        with located(str(cells.attrs["source_file"])):
+            values = np.full(cells.sizes["cell"],
+                             parse_quantity(wanted, "Pa", name="initial_pressure"))
     cells["initial_pressure"] = (known.dims, values,
                                  {"units": known.unit, "long_name": known.long_name})
 

@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     import xarray as xr
 
 LITHOSTATIC = 22.7e3  # Pa/m, weight of a heavy overburden; common practice, no source
+SEA_WATER = 1025.0 * 9.81  # Pa/m; common practice, no source
 HYDROSTATIC = 9.81e3  # Pa/m, fresh water
 ATMOSPHERE = 1.013e5  # Pa
 _JUMP = 100e5  # Pa
@@ -43,19 +44,22 @@ def pressure_not_positive(cells: xr.Dataset, surface: float) -> str | None:
 
 @check("lithostatic", "error", acceptable=True)
 def lithostatic(cells: xr.Dataset, surface: float) -> str | None:
-    """Pore pressure stays below the weight of the rock, 22.7 kPa/m from the surface."""
+    """Pore pressure stays below the weight of the rock, 22.7 kPa/m, and of the sea above it."""
     depth = cells["centroid"].values[:, 2]
-    limit = LITHOSTATIC * (depth - surface)
+    # The water above a seabed weighs too. Under 2000 m of it the rock alone would allow 22.7 kPa/m
+    # x 1000 m = 22.7 MPa at a depth of 3000 m, where plain hydrostatic is 9.81 kPa/m x 3000 m =
+    # 29.4 MPa already.
+    water = SEA_WATER * max(surface, 0.0)
+    limit = LITHOSTATIC * (depth - surface) + water
     for step, pressure in _histories(cells):
         wrong = np.flatnonzero(pressure > limit)
         if wrong.size:
             first = int(wrong[0])
-            water = (" Under deep water the weight of the water comes on top of this limit."
-                     if surface > 0 else "")
+            sea = f" plus {water / 1e5:.6g} bar of sea water above it" if surface > 0 else ""
             return (f"{step}: {counted(wrong.size)} {_has(wrong)} a pressure above lithostatic, "
                     f"first {place(cells, first)}: {_pressure(cells, pressure[first])} at "
                     f"a depth of {depth[first]:.6g} m (limit {limit[first] / 1e5:.6g} bar, 22.7 "
-                    "kPa/m below the surface); check the units of pressure and depth." + water)
+                    f"kPa/m below the surface{sea}); check the units of pressure and depth.")
     return None
 
 

@@ -12,7 +12,7 @@ from subside.grid.fields import require_field
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["CUT_OFF", "edge_depletion", "initial_pressure_of", "summarise"]
+__all__ = ["CUT_OFF", "cut_off_text", "edge_depletion", "initial_pressure_of", "summarise"]
 
 CUT_OFF = 0.05
 """Share of the largest depletion on the outer edge above which a grid is too small."""
@@ -55,6 +55,16 @@ def _largest_changes(cells: xr.Dataset, initial: np.ndarray) -> tuple[float, flo
     return on_edge, anywhere
 
 
+def cut_off_text(share: float) -> str | None:
+    """What to say of the edge depletion `share`: a sentence, or None where the grid is wide enough.
+    """
+    if share <= CUT_OFF:
+        return None
+    return (f"the depleted area is cut off by the grid: on its outer edge pressure changes by "
+            f"{100 * share:.0f} % of the largest change anywhere, so subsidence there and beyond "
+            "is too small; extend the grid or add the water leg.")
+
+
 def summarise(cells: xr.Dataset, initial_pressure: float | np.ndarray | None = None
               ) -> dict[str, Any]:
     """The contents of a grid, ready for JSON; the unit is part of each key.
@@ -93,9 +103,7 @@ def summarise(cells: xr.Dataset, initial_pressure: float | np.ndarray | None = N
         "regions": {name: _part(cells, region == n, initial) for n, name in enumerate(names)},
         "total": _part(cells, np.ones(cells.sizes["cell"], dtype=bool), initial),
         "edge_depletion_share": share,
-        "cut_off": (f"the depleted area is cut off by the grid: on its outer edge pressure changes "
-                    f"by {100 * share:.0f} % of the largest change anywhere, so subsidence there "
-                    "and beyond is too small" if share > CUT_OFF else None),
+        "cut_off": cut_off_text(share),
         "warnings": list(attrs.get("warnings", [])),
     }
 

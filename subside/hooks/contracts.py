@@ -128,11 +128,15 @@ class Law(Plugin, ABC):
 
         Causal (the strain at a time depends on nothing later) and cell by cell. Exact where the
         law has a closed form for pressure linear between times, so that cutting a step in two
-        changes nothing.
+        changes nothing. An `InputError` about one cell says which with its argument `cell`, the
+        cell's number in these arrays; the host turns it into the place in the grid.
         """
 
     def check(self, rock: Rock) -> None:
-        """Raise `InputError` where parameters contradict each other. Called before a run."""
+        """Raise `InputError` (with `cell`, see `strain`) where parameters contradict each other.
+
+        Called before a run.
+        """
         return None
 
     def start(self, rock: Rock) -> Any:

@@ -19,6 +19,7 @@ import pluggy
 from subside.errors import InputError, PluginError, nearest
 from subside.hooks import specs
 from subside.hooks.contracts import EarthModel, Exporter, Law, Plugin, Quantity, Reader
+from subside.params import Parameter
 
 __all__ = ["Registered", "Registry", "registry"]
 
@@ -81,7 +82,8 @@ class Registry:
     def load_file(self, path: Path) -> None:
         """Load a plug-in file that the user named on purpose."""
         if not path.is_file():
-            raise PluginError(f"plug-in file '{path}' does not exist.")
+            raise PluginError(f"plug-in file '{path}' does not exist; check --plugin, or plugins "
+                              "in the scenario (relative to the scenario file).")
         self.discover()
         digest = hashlib.sha256(path.read_bytes()).hexdigest()
         name = f"subside_plugin_{path.stem}_{digest[:12]}"
@@ -95,11 +97,23 @@ class Registry:
         try:
             spec.loader.exec_module(module)
             self._register(module, name, str(path), f"sha256:{digest[:12]}")
-        except PluginError:
-            raise
-        except Exception as error:
-            raise PluginError(f"plug-in file '{path}' cannot be loaded: "
-                              f"{type(error).__name__}: {error}") from error
+            for kind in specs.HOOKS:  # what is wrong shows now, whatever the run will ask for
+                self.all(kind)
+        except BaseException as error:
+            self._forget(module, name)
+            if isinstance(error, PluginError) or not isinstance(error, (Exception, SystemExit)):
+                raise
+            raise PluginError(f"plug-in file '{path}' cannot be loaded: {type(error).__name__}: "
+                              f"{error}. Mend the file, or run with --debug to see where."
+                              ) from error
+
+    def _forget(self, module: ModuleType, name: str) -> None:
+        """Leave no trace of a plug-in file that was refused."""
+        sys.modules.pop(name, None)
+        if self._manager.is_registered(module):
+            self._manager.unregister(module)
+        self._origin.pop(name, None)
+        self._by_kind.clear()
 
     def _register(self, module: ModuleType, name: str, origin: str, version: str) -> None:
         hooks = {n for n in vars(specs) if n.startswith("subside_")}
@@ -138,7 +152,11 @@ class Registry:
         hook = getattr(self._manager.hook, specs.HOOKS[kind])
         for impl in hook.get_hookimpls():
             origin, version = self._origin[impl.plugin_name]
-            classes = impl.function()
+            try:
+                classes = impl.function()
+            except Exception as error:
+                raise PluginError(f"plug-in {origin}: {specs.HOOKS[kind]} failed with "
+                                  f"{type(error).__name__}: {error}.") from error
             for cls in self._checked(classes, kind, origin):
                 if cls.name in found:
                     raise PluginError(
@@ -161,6 +179,10 @@ class Registry:
             if not cls.name or inspect.isabstract(cls):
                 missing = sorted(getattr(cls, "__abstractmethods__", ())) or ["name"]
                 raise PluginError(f"plug-in {origin}: {cls.__name__} lacks {', '.join(missing)}.")
+            odd = [p for p in cls.parameters if not isinstance(p, Parameter)]
+            if odd:
+                raise PluginError(f"plug-in {origin}: {cls.__name__}.parameters holds {odd[0]!r}, "
+                                  "which is no subside.api.Parameter.")
             yield cls
 
     def get(self, kind: str, name: str, where: str) -> type[Any]:

@@ -67,6 +67,7 @@ def read_points(paths: Sequence[Path], surface: float, crs_unit_in_m: float) -> 
                          for p in zip(*parts, strict=True)) if parts else (np.zeros(0),) * 4
     names, counts = np.unique(name, return_counts=True)
     if (counts > 1).any():
-        raise InputError(f"points: the name '{names[counts > 1][0]}' is used {counts.max()} times; "
-                         "names must differ.")
+        files = ", ".join(f"'{path}'" for path in paths)
+        raise InputError(f"points file {files}: the name '{names[counts > 1][0]}' is used "
+                         f"{counts[counts > 1][0]} times; names must differ.")
     return Points(np.asarray(name, dtype=str), x, y, depth)

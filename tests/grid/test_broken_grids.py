@@ -404,3 +404,26 @@ def test_bad_initial_pressure(tmp_path, initial, part):
     path = corner_draft().write(tmp_path / "grid.nc")
     with pytest.raises(InputError, match=part):
         open_grid(path, initial_pressure=initial)
+
+
+def test_the_sea_above_the_seabed_weighs_too(tmp_path):
+    # rock 22.7 kPa/m x (2030 - 1500) m = 120.31 bar, sea 1025 kg/m3 x 9.81 m/s2 x 1500 m =
+    # 150.829 bar: 271.139 bar in all. Hydrostatic, 9.81 kPa/m x 2030 m = 199.1 bar, lies above the
+    # rock alone and must pass.
+    draft = corner_draft()
+    draft.values("pressure")[...] = 199.1
+    assert open_grid(draft.write(tmp_path / "sea.nc"), surface=1500.0).sizes["cell"] == 60
+    draft.values("pressure")[1, 1, 2, 3] = 271.2
+    with pytest.raises(InputError, match=r"271\.2 bar at a depth of 2030 m \(limit 271\.139 bar, "
+                       r"22\.7 kPa/m below the surface plus 150\.829 bar of sea water above it\)"):
+        open_grid(draft.write(tmp_path / "high.nc"), surface=1500.0)
+    draft.values("pressure")[1, 1, 2, 3] = 271.1
+    assert open_grid(draft.write(tmp_path / "just.nc"), surface=1500.0).sizes["cell"] == 60
+
+
+def test_the_ground_above_the_datum_carries_no_sea(tmp_path):
+    # ground 100 m above the datum: 22.7 kPa/m x 2130 m = 483.51 bar
+    draft = corner_draft()
+    draft.values("pressure")[1, 1, 2, 3] = 484.0
+    with pytest.raises(InputError, match=r"limit 483\.51 bar, 22\.7 kPa/m below the surface\)"):
+        open_grid(draft.write(tmp_path / "high.nc"), surface=-100.0)
