@@ -9,7 +9,7 @@ from pathlib import Path
 import xarray as xr
 
 from subside.errors import CannotDo, InputError
-from subside.export.netcdf import read_result, write_result
+from subside.export.netcdf import scenario_file_of, write_result
 from subside.scenario import Scenario
 
 __all__ = ["ResultFile"]
@@ -52,7 +52,7 @@ class ResultFile:
         if not self.path.exists() or overwrite:
             return
         try:
-            made_from = str(read_result(self.path).attrs.get("scenario_file", ""))
+            made_from = scenario_file_of(self.path)
         except InputError:
             made_from = ""
         if made_from == self.source:

@@ -8,7 +8,8 @@ packing; no attribute that could contradict the coordinates.
 from __future__ import annotations
 
 import datetime
-from collections.abc import Hashable
+from collections.abc import Hashable, Iterator
+from contextlib import contextmanager
 from importlib import metadata
 from pathlib import Path
 from typing import Any
@@ -22,7 +23,7 @@ from subside.export.atomic import whole
 from subside.export.grid_mapping import axis_unit, grid_mapping, projected_crs
 from subside.names import CAUTIONS, RESULT_VARIABLES
 
-__all__ = ["check_map", "read_result", "write_result"]
+__all__ = ["check_map", "read_result", "scenario_file_of", "write_result"]
 
 FILL = np.float32(-9999.0)
 LAYOUT = "subside result 1"
@@ -280,7 +281,24 @@ def read_result(path: str | Path) -> xr.Dataset:
     InputError
         If there is no such file, it is truncated, or it is not a result.
     """
-    path = Path(path)
+    with _opened(Path(path)) as file:
+        return _read(file)
+
+
+def scenario_file_of(path: Path) -> str:
+    """The scenario a result was made from, as its attribute `scenario_file` tells.
+
+    Raises
+    ------
+    InputError
+        As `read_result`.
+    """
+    with _opened(path) as file:
+        return str(getattr(file, "scenario_file", ""))
+
+
+@contextmanager
+def _opened(path: Path) -> Iterator[netCDF4.Dataset]:
     if not path.is_file():
         raise InputError(f"result file '{path}' does not exist; make it with `subside run`.")
     try:
@@ -288,9 +306,7 @@ def read_result(path: str | Path) -> xr.Dataset:
             if getattr(file, "file_layout", "") != LAYOUT:
                 raise InputError(f"'{path}' is a NetCDF file but not a result of `subside run` "
                                  f"(its attribute file_layout is not '{LAYOUT}').")
-            return _read(file)
-    except InputError:
-        raise
+            yield file
     except (OSError, RuntimeError, ValueError) as error:
         raise InputError(f"'{path}' cannot be read as a NetCDF result: {error}. It may be "
                          "truncated or of another kind; make it again with `subside run`."
