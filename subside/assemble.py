@@ -24,7 +24,7 @@ from subside.observe.points import Points
 from subside.observe.request import GRADIENT_NAMES, Request
 from subside.quantities.bowl import bowl_volume, extremes, volume_above
 from subside.scenario import Scenario
-from subside.superposition.interface import Bodies, Fields
+from subside.superposition.interface import Bodies, Fields, SolverRecord
 from subside.timeline import Timeline
 
 __all__ = ["Parts", "assemble"]
@@ -46,6 +46,7 @@ class Parts:
     compaction: Compaction
     fields: Fields
     region_fields: list[Fields]
+    solver: SolverRecord
     edge_depletion: float
     warnings: list[str]
 
@@ -205,7 +206,6 @@ def _record(parts: Parts) -> dict[str, str | float]:
                      for name in used for r in registry.find(name))
     packages = ("subside", "numpy", "scipy", "xarray", "netCDF4", "numba", "pyproj")
     versions = ", ".join(f"{p} {metadata.version(p)}" for p in packages)
-    tolerance = scenario.solver.tolerance
     wkt = str(cells.attrs.get("crs_wkt", ""))
     return {
         "title": scenario.title or scenario.path.stem,
@@ -221,11 +221,10 @@ def _record(parts: Parts) -> dict[str, str | float]:
         "versions": f"{versions}, python {platform.python_version()}",
         "plugins": "; ".join(plugins),
         "earth_model": parts.earth.name,
-        "solver_method": "direct",
-        "solver_tolerance": tolerance,
-        "solver_error_estimate": (
-            f"at most {0.1 * tolerance:.1e} of the largest displacement, from the order of the "
-            "points that stand for each cell; the sum itself is exact to rounding"),
+        "solver_method": ", ".join(parts.solver.methods),
+        "solver_tolerance": scenario.solver.tolerance,
+        "solver_error": parts.solver.error,
+        "solver_notes": "; ".join(parts.solver.notes),
         "edge_depletion": parts.edge_depletion,
         "warnings": "\n".join(parts.warnings) or "none",
         "cautions": " ".join(CAUTIONS),

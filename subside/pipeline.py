@@ -5,7 +5,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -29,7 +29,7 @@ from subside.observe.request import Request, read_request
 from subside.progress import Progress
 from subside.result_file import ResultFile
 from subside.scenario import Scenario, load_scenario
-from subside.superposition.interface import Bodies, Fields, Targets
+from subside.superposition.interface import Bodies, Fields, SolverRecord, Targets
 from subside.superposition.plan import Plan, make_plan
 from subside.survey.overlay import read_survey
 from subside.timeline import Timeline, make_timeline
@@ -184,11 +184,12 @@ def run(
     with located(f"scenario '{scenario.path}'"):
         compaction = _compact(job, progress)
         grid = _map(job, compaction) if job.wants_map else None
-        fields, region_fields = _superpose(job, compaction, grid, progress)
+        fields, region_fields, record = _superpose(job, compaction, grid, progress)
     result = assemble(Parts(
         scenario=job.scenario, timeline=job.timeline, blocks=job.blocks, earth=job.earth,
         bodies=job.bodies, depth=job.depth, points=job.points, request=job.request, grid=grid,
         compaction=compaction, fields=fields, region_fields=region_fields,
+        solver=record,
         edge_depletion=job.edge_depletion, warnings=[*job.warnings, *compaction.warnings],
     ))
     if target is not None:
@@ -205,32 +206,38 @@ def _compact(job: Job, progress: Progress) -> Compaction:
 
 
 def _superpose(job: Job, compaction: Compaction, grid: MapGrid | None,
-               progress: Progress) -> tuple[Fields, list[Fields]]:
+               progress: Progress) -> tuple[Fields, list[Fields], SolverRecord]:
     """The field at map and points together, and by region on the map where asked for."""
     moments = compaction.moments
-    solver = job.plan(0).solver()
-    solve = partial(solver.solve, job.bodies, earth=job.earth,
-                    tolerance=job.scenario.solver.tolerance)
     at_map = grid.targets if grid is not None else None
     at_points = job.points.targets
     regions = job.cells.sizes["region"] if job.request.by_region and grid is not None else 0
     size = at_map.x.size if at_map is not None else 0
     pairs = float(job.bodies.count) * len(moments) * (size + at_points.x.size + regions * size)
+    record = SolverRecord()
     region_fields = []
     with progress.stage("superposition", pairs, "pairs") as advance:
+
+        def solve(moments: Mapping[str, np.ndarray], targets: Targets, gradient: bool) -> Fields:
+            solver = job.plan(targets.x.size, len(moments)).solver()
+            field = solver.solve(job.bodies, moments, targets, job.earth, gradient=gradient,
+                                 tolerance=job.scenario.solver.tolerance, progress=advance)
+            record.note(solver)
+            return field
+
         fields: Fields = {}
         if at_map is not None:
             fields |= {f"map_{name}": values for name, values in solve(
-                moments, at_map, gradient=job.request.gradient, progress=advance).items()}
+                moments, at_map, job.request.gradient).items()}
         if at_points.x.size:
             fields |= {f"point_{name}": values for name, values in solve(
-                moments, at_points, progress=advance).items()}
+                moments, at_points, False).items()}
         for region in range(regions):
             chosen = job.cells["region"].values == region
             part = {source: np.where(chosen, moment, 0.0) for source, moment in moments.items()}
             assert at_map is not None
-            region_fields.append(solve(part, at_map, progress=advance))
-    return fields, region_fields
+            region_fields.append(solve(part, at_map, False))
+    return fields, region_fields, record
 
 
 def _map(job: Job, compaction: Compaction) -> MapGrid:
@@ -246,7 +253,8 @@ def _map(job: Job, compaction: Compaction) -> MapGrid:
     moments = {source: moment[steps] for source, moment in compaction.moments.items()}
 
     def subsidence_at(targets: Targets) -> np.ndarray:
-        field = job.plan(0).solver().solve(job.bodies, moments, targets, job.earth, tolerance=1e-2)
+        solver = job.plan(targets.x.size, len(moments)).solver()
+        field = solver.solve(job.bodies, moments, targets, job.earth, tolerance=1e-2)
         return np.asarray(np.abs(field["down"]).max(axis=0))
 
     return plan_map(job.scenario.map, corners[..., :2].min(axis=(0, 1)),

@@ -39,6 +39,7 @@ def facts_of(result: xr.Dataset) -> dict[str, Any]:
         "earth_model": result.attrs["earth_model"],
         "solver_method": result.attrs["solver_method"],
         "solver_tolerance": float(result.attrs["solver_tolerance"]),
+        "solver_error": float(result.attrs["solver_error"]),
         "warnings": [w for w in str(result.attrs["warnings"]).split("\n") if w != "none"],
         "cautions": list(CAUTIONS),
     }
@@ -75,9 +76,10 @@ def print_summary(result: xr.Dataset, files: Sequence[Path]) -> None:
         rows.append(("map", f"{width} x {height} pixels of {facts['map_spacing']:g} {unit}"))
     if "points" in facts:
         rows.append(("points", f"{facts['points']}"))
-    rows.append(("earth, solver", f"{facts['earth_model']}, {facts['solver_method']} sum to "
-                 f"{facts['solver_tolerance']:g} of the largest movement"))
-    rows += [("written" if n == 0 else "", str(file)) for n, file in enumerate(files)]
+    rows.append(("earth", str(facts["earth_model"])))
+    rows.append(("solver", f"{facts['solver_method']}; error {facts['solver_error']:.1g} of the "
+                 f"largest movement, {facts['solver_tolerance']:g} allowed"))
+    rows += [("written" if n == 0 else "", _shown(file)) for n, file in enumerate(files)]
     width = max(len(label) for label, _ in rows)
     click.echo(facts["title"])
     for label, text in rows:
@@ -85,6 +87,12 @@ def print_summary(result: xr.Dataset, files: Sequence[Path]) -> None:
     for warning in facts["warnings"]:
         click.echo(f"warning: {warning}")
     click.echo("Cautions: " + " ".join(facts["cautions"]))
+
+
+def _shown(file: Path) -> str:
+    """A path as seen from the working folder where it lies below it."""
+    here = Path.cwd()
+    return str(file.relative_to(here) if file.is_relative_to(here) else file)
 
 
 def _day(result: xr.Dataset, step: int) -> str:

@@ -108,6 +108,7 @@ def compact(
         net *= ratio
     strain = np.zeros((nt, cells))
     contraction = np.zeros((nt, cells))
+    rise = np.zeros(cells)
     warnings: list[str] = []
     for block in blocks:
         for start in range(0, block.cells.size, _CELLS_AT_ONCE):
@@ -118,10 +119,11 @@ def compact(
             keep = np.searchsorted(history.time, axis.output)
             strain[:, index] = law_strain[keep]
             drop_stress = history.stress_rise[keep]
+            rise[index] = drop_stress[-1]
             contraction[:, index] = net[index] * _released(
                 block, part, law_strain[keep], drop_stress, earth, depth[index])
             progress(index.size)
-        warnings += _mismatch(block, strain, pressure, earth, depth)
+        warnings += _mismatch(block, strain[-1], rise, earth, depth)
     _alarm(strain, dataset, warnings)
     closure = strain * net - contraction
     # A crack share that is only rounding is none: the classic nucleus stays one kernel.
@@ -186,17 +188,19 @@ def _released(block: Block, part: slice, strain: np.ndarray, stress_rise: np.nda
     return strain * release
 
 
-def _mismatch(block: Block, strain: np.ndarray, pressure: np.ndarray, earth: EarthModel,
+def _mismatch(block: Block, last_strain: np.ndarray, last_rise: np.ndarray, earth: EarthModel,
               depth: np.ndarray) -> list[str]:
-    """Says when a reservoir unlike its host is treated as if it were alike."""
+    """Says when a reservoir unlike its host is treated as if it were alike.
+
+    Judged at the last output date: strain and stress rise (cell,) of that date.
+    """
     if block.table.horizontal_release != "matched" or not earth.has_modulus or not block.cells.size:
         return []
-    biot = np.broadcast_to(np.asarray(block.value_of_cells("biot")), block.cells.shape)
-    rise = biot * (pressure[0, block.cells] - pressure[-1, block.cells])
+    rise = last_rise[block.cells]
     fell = rise > 0.1 * max(float(rise.max()), 1.0)
     if not fell.any():
         return []
-    ratio = np.median(strain[-1, block.cells][fell] / rise[fell]
+    ratio = np.median(last_strain[block.cells][fell] / rise[fell]
                       * np.broadcast_to(earth.modulus_at(depth[block.cells]), rise.shape)[fell])
     if 0.5 <= ratio <= 2.0:
         return []

@@ -17,6 +17,7 @@ __all__ = ["MapGrid", "plan_map", "round_spacing"]
 _REACH_SHARE = 0.01
 """An automatic map reaches to this share of the peak."""
 _COARSE = 48
+_WIDENINGS = 24
 _LARGEST = 20_000
 
 
@@ -84,24 +85,22 @@ def plan_map(
         columns, rows = (east - west) / step, (north - south) / step
         for count, word in ((columns, "xmax - xmin"), (rows, "ymax - ymin")):
             if abs(count - round(count)) > 1e-6 * max(count, 1.0):
-                raise InputError(f"[map] bounds: {word} is {count * step:g} m, which is not a whole "
-                                 f"multiple of the spacing {step:g} m.")
+                raise InputError(f"[map] bounds: {word} is {count * step:g} m, which is not a "
+                                 f"whole multiple of the spacing {step:g} m.")
         return _grid(west, north, step, round(columns), round(rows))
     west, south, east, north = _reach(low, high, depth, subsidence_at)
     step = spacing or round_spacing(depth, max(east - west, north - south))
-    unit = step / unit_in_m
     first_column, last_column = (math.floor(west / step), math.ceil(east / step))
     first_row, last_row = math.floor(south / step), math.ceil(north / step)
     columns = max(last_column - first_column, 2)
     rows = max(last_row - first_row, 2)
-    return _grid(first_column * unit * unit_in_m, (first_row + rows) * unit * unit_in_m, step,
-                 columns, rows)
+    return _grid(first_column * step, (first_row + rows) * step, step, columns, rows)
 
 
 def _grid(west: float, north: float, step: float, columns: int, rows: int) -> MapGrid:
     if min(columns, rows) < 2:
-        raise InputError(f"[map]: it has {rows} x {columns} pixels; at least 2 x 2 are needed for a "
-                         "map that a GIS can place; give a smaller spacing or wider bounds.")
+        raise InputError(f"[map]: it has {rows} x {columns} pixels; at least 2 x 2 are needed for "
+                         "a map that a GIS can place; give a smaller spacing or wider bounds.")
     if max(columns, rows) > _LARGEST:
         raise InputError(f"[map]: it has {rows} x {columns} pixels; more than {_LARGEST} on a side "
                          f"is refused; give a larger spacing than {step:g} m.")
@@ -119,8 +118,9 @@ def round_spacing(depth: float, extent: float) -> float:
 def _reach(low: np.ndarray, high: np.ndarray, depth: float,
            subsidence_at: Callable[[Targets], np.ndarray]) -> tuple[float, float, float, float]:
     """West, south, east, north of where the ground moves by more than 1 % of the peak."""
-    margin = 2.0 * depth
-    for _ in range(8):
+    # the reach follows from the deepest cells that matter, which may lie far below the shallowest
+    margin = max(2.0 * depth, 0.05 * float((high - low).max()))
+    for _ in range(_WIDENINGS):
         x = np.linspace(low[0] - margin, high[0] + margin, _COARSE)
         y = np.linspace(low[1] - margin, high[1] + margin, _COARSE)
         grid_x, grid_y = np.meshgrid(x, y)

@@ -23,7 +23,7 @@ __all__ = ["figure_bowl", "figure_curves", "made_from", "refuse_figures", "save_
 def save_figures(
     result: xr.Dataset, stem: Path, *, survey: pd.DataFrame | None = None, overwrite: bool
 ) -> list[Path]:
-    """Save ``STEM-bowl.png`` and ``STEM-curves.png``; return the files.
+    """Save ``STEM-map.png`` and ``STEM-curves.png``; return the files.
 
     Parameters
     ----------
@@ -45,7 +45,7 @@ def save_figures(
     """
     figures: dict[Path, Figure] = {}
     if "subsidence" in result or result.sizes.get("point", 0) > 0:
-        figures[_beside(stem, "bowl")] = figure_bowl(result)
+        figures[_beside(stem, "map")] = figure_bowl(result)
     figures[_beside(stem, "curves")] = figure_curves(result, survey)
     refuse_existing(figures, overwrite)
     metadata = {"Software": "subside", "Source": str(result.attrs.get("scenario_file", ""))}
@@ -61,7 +61,7 @@ def refuse_figures(stem: Path, source: str, overwrite: bool) -> None:
     Asked before a long run, so that nothing is computed in vain.
     """
     if not overwrite:
-        refuse_existing((path for path in (_beside(stem, "bowl"), _beside(stem, "curves"))
+        refuse_existing((path for path in (_beside(stem, "map"), _beside(stem, "curves"))
                          if path.exists() and made_from(path) != source), overwrite)
 
 

@@ -27,6 +27,8 @@ _SHARE_OF_TOLERANCE = 0.1
 """The part of the tolerance that sampling a finite cell by points may use."""
 _EXACT_FROM_POINTS = 36
 """A box over a half-space that would take more points than this is integrated exactly."""
+_MOST_POINTS = 300_000
+"""A cell that would take more points is refused: too wide for its depth."""
 _PAIRS_AT_ONCE = 2e7
 """Cell-target pairs between two words of progress."""
 
@@ -35,6 +37,10 @@ class Direct:
     """The plain sum over finite cells."""
 
     name = "direct"
+
+    def __init__(self) -> None:
+        self.achieved_error = 0.0
+        self.notes = ["plain sum over all cells"]
 
     def solve(
         self,
@@ -53,9 +59,10 @@ class Direct:
         surface = np.nonzero(targets.at_surface)[0]
         deep = np.nonzero(~targets.at_surface)[0]
         _can_be_done(earth, targets, deep, gradient)
+        self.achieved_error = _SHARE_OF_TOLERANCE * tolerance
         result = np.zeros((len(names), steps, targets.x.size))
         block = max(256, int(_PAIRS_AT_ONCE / max(targets.x.size, 1)))
-        # each thread multiplies its own tiles: threads of the matrix library would only be in the way
+        # each thread multiplies its own tiles: threads of the matrix library would be in the way
         with threadpool_limits(limits=1, user_api="blas"):
             for source, moment in moments.items():
                 live = np.nonzero(np.any(moment != 0.0, axis=0))[0]
@@ -92,9 +99,20 @@ def _can_be_done(earth: Any, targets: Targets, deep: np.ndarray, gradient: bool)
         )
 
 
-def _tile_width(targets: int, largest: int) -> int:
-    """Targets in a tile: enough tiles for the threads, none larger than the cache likes."""
-    fair = -(-targets // (4 * numba.get_num_threads()))
+def _refuse_too_shallow(corners: np.ndarray, points: np.ndarray) -> None:
+    if (points > _MOST_POINTS).any():
+        cell = corners[int(np.argmax(points))]
+        width = float(np.ptp(cell[:, :2], axis=0).max())
+        raise InputError(
+            f"a cell {width:g} m wide reaches up to {float(cell[:, 2].min()):g} m below the ground "
+            f"or seabed, near x = {float(cell[:, 0].mean()):.0f} m, y = "
+            f"{float(cell[:, 1].mean()):.0f} m: it is too wide for its depth to be summed as "
+            "points; split it, give its box instead of corners, or leave it out.")
+
+
+def _tile_width(targets: int, largest: int, rounds: int) -> int:
+    """Targets in a tile: `rounds` tiles for each thread, none larger than the cache likes."""
+    fair = -(-targets // (rounds * numba.get_num_threads()))
     return int(min(max(fair, 16), largest))
 
 
@@ -112,10 +130,10 @@ class _Surface:
         if self._poisson is None and surface.size:
             table = RadialTable.covering(earth, source, bodies, live, targets, gradient)
             self._table = (table.depths, table.weights, table.step, table.coefficients)
-            self._width = _tile_width(surface.size, 2048)
+            self._width = _tile_width(surface.size, 2048, 1)
         else:
             self._table = (np.zeros(0), np.zeros(0), 1.0, np.zeros((0, 1, 1, 4)))
-            self._width = _tile_width(surface.size, 512)
+            self._width = _tile_width(surface.size, 512, 4)
 
     def add(self, field: np.ndarray, cells: np.ndarray, corners: np.ndarray,
             strength: np.ndarray) -> None:
@@ -126,6 +144,7 @@ class _Surface:
         if self._boxes is not None and self._poisson is not None:
             exact = rule.prod(axis=1) > _EXACT_FROM_POINTS
             boxes = self._boxes[cells]
+        _refuse_too_shallow(corners, np.where(exact, 1, rule.prod(axis=1)))
         add_surface(field, self._width, self._x, self._y, corners, rule, boxes, exact, strength,
                     self._closure, self._poisson or 0.0, *self._table)
 

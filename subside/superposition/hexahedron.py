@@ -43,18 +43,19 @@ def sample_cell(corners: np.ndarray, rule: np.ndarray) -> np.ndarray:
     points = np.empty((total, 4))
     row = 0
     volume = 0.0
-    for pu in range(rule[3]):
-        for qu in range(rule[0]):
-            u = (pu + GAUSS_NODES[rule[0], qu]) / rule[3]
-            wu = GAUSS_WEIGHTS[rule[0], qu]
-            for pv in range(rule[4]):
-                for qv in range(rule[1]):
-                    v = (pv + GAUSS_NODES[rule[1], qv]) / rule[4]
-                    wv = wu * GAUSS_WEIGHTS[rule[1], qv]
-                    for pw in range(rule[5]):
-                        for qw in range(rule[2]):
-                            w = (pw + GAUSS_NODES[rule[2], qw]) / rule[5]
-                            weight = wv * GAUSS_WEIGHTS[rule[2], qw]
+    # depth runs slowest: the points of a flat cell come in runs of one depth, which a table likes
+    for pw in range(rule[5]):
+        for qw in range(rule[2]):
+            w = (pw + GAUSS_NODES[rule[2], qw]) / rule[5]
+            ww = GAUSS_WEIGHTS[rule[2], qw]
+            for pu in range(rule[3]):
+                for qu in range(rule[0]):
+                    u = (pu + GAUSS_NODES[rule[0], qu]) / rule[3]
+                    wu = ww * GAUSS_WEIGHTS[rule[0], qu]
+                    for pv in range(rule[4]):
+                        for qv in range(rule[1]):
+                            v = (pv + GAUSS_NODES[rule[1], qv]) / rule[4]
+                            weight = wu * GAUSS_WEIGHTS[rule[1], qv]
                             weight *= _place(corners, u, v, w, points[row])
                             points[row, 3] = weight
                             volume += weight

@@ -6,12 +6,14 @@ A solver is anything with the `solve` of `Solver`; `direct` is the plain sum and
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any, Protocol
 
 import numpy as np
 
-__all__ = ["DISPLACEMENT", "GRADIENT", "Bodies", "Fields", "Solver", "Targets"]
+__all__ = [
+    "DISPLACEMENT", "GRADIENT", "Bodies", "Fields", "Solver", "SolverRecord", "Targets",
+]
 
 DISPLACEMENT = ("down", "east", "north")
 """Components of displacement, m: downward, to the east, to the north."""
@@ -59,9 +61,16 @@ class Targets:
 
 
 class Solver(Protocol):
-    """One way to add up the sources."""
+    """One way to add up the sources.
+
+    After `solve`, `name` is the method used, `achieved_error` the error over the largest
+    displacement (measured, or the bound of the sampling of cells for the plain sum), and `notes`
+    says what was done.
+    """
 
     name: str
+    achieved_error: float
+    notes: list[str]
 
     def solve(
         self,
@@ -91,3 +100,18 @@ class Solver(Protocol):
             Told the number of cell-target pairs done since the last call.
         """
         ...
+
+
+@dataclass
+class SolverRecord:
+    """What the solvers of a run did: methods, largest error, notes, each once."""
+
+    methods: list[str] = field(default_factory=list)
+    error: float = 0.0
+    notes: list[str] = field(default_factory=list)
+
+    def note(self, solver: Solver) -> None:
+        """Take down what a solver did last."""
+        self.error = max(self.error, solver.achieved_error)
+        for kept, new in ((self.methods, [solver.name]), (self.notes, solver.notes)):
+            kept += [text for text in new if text not in kept]

@@ -42,13 +42,20 @@ def surface_rule(corners: np.ndarray, tolerance: float, gradient: bool) -> np.nd
     top = corners[:, :, 2].min(axis=1)
     thickness = corners[:, :, 2].max(axis=1) - top
     half.append(0.5 * thickness)
+    # a cell that reaches the surface has no such rule: this one has far too many points
+    top = np.maximum(top, 1e-6 * np.max(half, axis=0))
     quantity = "gradient" if gradient else "displacement"
     rule = np.ones((corners.shape[0], 6), dtype=np.int64)
+    pillars = corners[:, 4:, :2] - corners[:, :4, :2]
+    lean = 0.5 * np.linalg.norm(pillars, axis=2).max(axis=1)
     for direction in range(3):
-        word = "vertical" if direction == 2 else "horizontal"
         panels = np.ones(corners.shape[0], dtype=np.int64)
         for _ in range(12):
+            word = "vertical" if direction == 2 else "horizontal"
             order = gauss_order(half[direction] / panels, top, tolerance, word, quantity)
+            if direction == 2:  # going down a leaning pillar is going sideways too
+                order = np.maximum(order, gauss_order(lean / panels, top, tolerance, "horizontal",
+                                                      quantity))
             too_many = order > MAX_ORDER
             if not too_many.any():
                 break

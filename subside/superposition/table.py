@@ -1,8 +1,8 @@
 """Radial tables: the kernel of any earth model, computed once per run.
 
 A kernel is tabulated at Chebyshev depths of the sources and over asinh(radius/depth), where it is
-smooth whatever the depth, as cubic splines. The number of depths and radii grows until values
-between the nodes agree with the earth model itself.
+smooth whatever the depth, as cubic splines. The number of radii, then that of depths, grows until
+values between the nodes agree with the earth model itself.
 """
 
 from __future__ import annotations
@@ -73,27 +73,30 @@ class RadialTable:
         top = float(np.arcsinh(1.01 * reach / shallow))
         if deep - shallow < 1e-9 * deep:
             shallow, deep = shallow * (1 - 1e-9), deep * (1 + 1e-9)
-        error = np.inf
+        # radii first, on the two outermost depths alone: cheap, and the rest needs no second try
+        ends = np.array([shallow, deep])
         for radii in _RADII:
-            count = 6
-            while count <= _MAX_DEPTHS:
-                table = cls._of_size(earth, source, shallow, deep, top, radii, count, gradient)
-                if table.error < _ACCURACY:
-                    return table
-                if table.error > 0.5 * error and count > 12:
-                    break
-                error = table.error
-                count *= 2
+            table = cls._at(earth, source, ends, np.array([1.0, -1.0]), ends, top, radii, gradient)
+            if table.error < 0.5 * _ACCURACY:
+                break
+        count = 6
+        while count <= _MAX_DEPTHS and (count > 6 or table.error < 0.5 * _ACCURACY):
+            angle = (2 * np.arange(count) + 1) * np.pi / (2 * count)
+            depths = 0.5 * (shallow + deep) - 0.5 * (deep - shallow) * np.cos(angle)
+            weights = np.sin(angle) * (-1.0) ** np.arange(count)
+            table = cls._at(earth, source, depths, weights, 0.5 * (depths[1:] + depths[:-1]), top,
+                            radii, gradient)
+            if table.error < _ACCURACY:
+                return table
+            count *= 2
         raise InputError(f"earth model '{earth.name}': its {source} kernel cannot be tabulated to "
                          f"{_ACCURACY:g} (reached {table.error:.1g}) for sources {shallow:g} to "
                          f"{deep:g} m deep; it must be smooth in radius and depth there.")
 
     @classmethod
-    def _of_size(cls, earth: Any, source: str, shallow: float, deep: float, top: float,
-                 radii: int, count: int, gradient: bool) -> RadialTable:
-        angle = (2 * np.arange(count) + 1) * np.pi / (2 * count)
-        depths = 0.5 * (shallow + deep) - 0.5 * (deep - shallow) * np.cos(angle)
-        weights = np.sin(angle) * (-1.0) ** np.arange(count)
+    def _at(cls, earth: Any, source: str, depths: np.ndarray, weights: np.ndarray,
+            check_depth: np.ndarray, top: float, radii: int, gradient: bool) -> RadialTable:
+        """A table on given depths, and its error halfway between its radii at `check_depth`."""
         grid = np.linspace(0.0, top, radii + 1)
         values = _kernel(earth, source, grid, depths, gradient)
         spline = CubicSpline(grid, values, axis=2)
@@ -101,7 +104,6 @@ class RadialTable:
         scale = (grid[1] - grid[0]) ** np.arange(3, -1, -1)
         pieces = np.moveaxis(spline.c, (0, 1), (-1, -2)) * scale
         table = cls(depths, weights, float(grid[1]), np.ascontiguousarray(pieces), 0.0)
-        check_depth = 0.5 * (depths[1:] + depths[:-1])
         check_grid = 0.5 * (grid[1:] + grid[:-1])[::7]
         truth = _kernel(earth, source, check_grid, check_depth, gradient)
         guess = table.values(check_grid, check_depth)

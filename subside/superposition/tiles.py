@@ -15,9 +15,7 @@ from numba import njit, prange
 
 from subside.earth.box import box_surface, box_surface_gradient
 from subside.earth.half_space import (
-    closure_over_r2,
     closure_slopes_over_r2,
-    contraction_over_r2,
     contraction_slopes_over_r2,
 )
 from subside.superposition.hexahedron import sample_cell
@@ -61,85 +59,85 @@ def add_surface(result: np.ndarray, width: int, x: np.ndarray, y: np.ndarray, co
             stop = min(start + _CHUNK, corners.shape[0])
             tile[:] = 0.0
             for c in range(start, stop):
-                part = tile[:, c - start]
+                row = c - start
+                if exact[c]:
+                    _fill_box(tile, row, tx, ty, boxes[c], closure, poisson)
+                    continue
+                points = sample_cell(corners[c], rule[c])
                 if depths.size > 0:
-                    _fill_table(part, tx, ty, sample_cell(corners[c], rule[c]), depths, weights,
-                                step, coefficients, mixed)
-                elif exact[c]:
-                    _fill_box(part, tx, ty, boxes[c], closure, poisson)
+                    _fill_table(tile, row, tx, ty, points, depths, weights, step, coefficients,
+                                mixed)
                 else:
-                    _fill_points(part, tx, ty, sample_cell(corners[c], rule[c]), closure, poisson)
+                    _fill_points(tile, row, tx, ty, points, closure, poisson)
             strength = moment[start:stop].T
             for k in range(components):
                 local[k] += np.dot(strength, tile[k, :stop - start])
         result[:, :, first:last] += local
 
 
+# Short loops with few outputs are turned into vector code, one loop with eight is not; so the
+# kernel goes into scratch once, and the loops after it only multiply. A tile comes whole, with a
+# row: a view of it would be taken as strided, and not vectorised.
+
+
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _fill_points(part: np.ndarray, x: np.ndarray, y: np.ndarray, points: np.ndarray, closure: bool,
-                 poisson: float) -> None:
+def _fill_points(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
+                 points: np.ndarray, closure: bool, poisson: float) -> None:
     """A cell as weighted points in a homogeneous half-space."""
+    size = x.size
+    dx, dy, outward, bend = np.empty(size), np.empty(size), np.empty(size), np.empty(size)
+    gradient = tile.shape[0] > 3
     for n in range(points.shape[0]):
-        _add_displacement(part[0], part[1], part[2], x, y, points[n], closure, poisson)
-        if part.shape[0] > 3:
-            _add_slopes(part[3], part[4], x, y, points[n], closure, poisson)
-            _add_strain(part[5], part[6], part[7], x, y, points[n], closure, poisson)
+        px, py, depth, weight = points[n, 0], points[n, 1], points[n, 2], points[n, 3]
+        for t in range(size):
+            dx[t] = x[t] - px
+            dy[t] = y[t] - py
+            r2 = dx[t] * dx[t] + dy[t] * dy[t]
+            if closure:
+                q, bent, _ = closure_slopes_over_r2(r2, depth)
+            else:
+                q, bent, _ = contraction_slopes_over_r2(r2, depth, poisson)
+            outward[t] = weight * q
+            bend[t] = weight * bent
+        _add_displacement(tile[0, row], tile[1, row], tile[2, row], dx, dy, outward, depth)
+        if gradient:
+            _add_slopes(tile[3, row], tile[4, row], dx, dy, bend, depth)
+            _add_strain(tile[5, row], tile[6, row], tile[7, row], dx, dy, outward, bend)
 
 
-# Three loops with few outputs each: the compiler turns these into vector code, one loop with
-# eight outputs it does not (measured: a third of the time, although the kernel is evaluated anew).
-
-
-@njit(cache=True, fastmath=True, error_model="numpy")
-def _add_displacement(down: np.ndarray, east: np.ndarray, north: np.ndarray, x: np.ndarray,
-                      y: np.ndarray, point: np.ndarray, closure: bool, poisson: float) -> None:
-    px, py, depth, weight = point
-    for t in range(x.size):
-        dx, dy = x[t] - px, y[t] - py
-        r2 = dx * dx + dy * dy
-        if closure:
-            outward, downward = closure_over_r2(r2, depth)
-        else:
-            outward, downward = contraction_over_r2(r2, depth, poisson)
-        down[t] += weight * downward
-        east[t] += weight * outward * dx
-        north[t] += weight * outward * dy
+# Both surface kernels point at their source: downward = -depth x outward/r, and so the slope of
+# the downward movement is -depth times the bend of the horizontal one (tested).
 
 
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _add_slopes(by_east: np.ndarray, by_north: np.ndarray, x: np.ndarray, y: np.ndarray,
-                point: np.ndarray, closure: bool, poisson: float) -> None:
-    px, py, depth, weight = point
-    for t in range(x.size):
-        dx, dy = x[t] - px, y[t] - py
-        r2 = dx * dx + dy * dy
-        if closure:
-            slope = closure_slopes_over_r2(r2, depth)[2]
-        else:
-            slope = contraction_slopes_over_r2(r2, depth, poisson)[2]
-        by_east[t] += weight * slope * dx
-        by_north[t] += weight * slope * dy
+def _add_displacement(down: np.ndarray, east: np.ndarray, north: np.ndarray, dx: np.ndarray,
+                      dy: np.ndarray, outward: np.ndarray, depth: float) -> None:
+    for t in range(dx.size):
+        down[t] -= depth * outward[t]
+        east[t] += outward[t] * dx[t]
+        north[t] += outward[t] * dy[t]
 
 
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _add_strain(along_east: np.ndarray, along_north: np.ndarray, shear: np.ndarray, x: np.ndarray,
-                y: np.ndarray, point: np.ndarray, closure: bool, poisson: float) -> None:
-    px, py, depth, weight = point
-    for t in range(x.size):
-        dx, dy = x[t] - px, y[t] - py
-        r2 = dx * dx + dy * dy
-        if closure:
-            outward, bend, _ = closure_slopes_over_r2(r2, depth)
-        else:
-            outward, bend, _ = contraction_slopes_over_r2(r2, depth, poisson)
-        along_east[t] += weight * (outward + bend * dx * dx)
-        along_north[t] += weight * (outward + bend * dy * dy)
-        shear[t] += weight * bend * dx * dy
+def _add_slopes(by_east: np.ndarray, by_north: np.ndarray, dx: np.ndarray, dy: np.ndarray,
+                bend: np.ndarray, depth: float) -> None:
+    for t in range(dx.size):
+        by_east[t] -= depth * bend[t] * dx[t]
+        by_north[t] -= depth * bend[t] * dy[t]
+
+
+@njit(cache=True, fastmath=True, error_model="numpy")
+def _add_strain(along_east: np.ndarray, along_north: np.ndarray, shear: np.ndarray,
+                dx: np.ndarray, dy: np.ndarray, outward: np.ndarray, bend: np.ndarray) -> None:
+    for t in range(dx.size):
+        along_east[t] += outward[t] + bend[t] * dx[t] * dx[t]
+        along_north[t] += outward[t] + bend[t] * dy[t] * dy[t]
+        shear[t] += bend[t] * dx[t] * dy[t]
 
 
 @njit(cache=True)
-def _fill_box(part: np.ndarray, x: np.ndarray, y: np.ndarray, box: np.ndarray, closure: bool,
-              poisson: float) -> None:
+def _fill_box(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray, box: np.ndarray,
+              closure: bool, poisson: float) -> None:
     """An upright box by the exact integral, homogeneous half-space."""
     bx, by, top, bottom, dx, dy, azimuth = box
     cosine = math.cos(math.radians(azimuth))
@@ -155,25 +153,25 @@ def _fill_box(part: np.ndarray, x: np.ndarray, y: np.ndarray, box: np.ndarray, c
         y0, y1 = -0.5 * dy - v, 0.5 * dy - v
         field = box_surface(x0, x1, y0, y1, top, bottom, poisson)
         own_x, own_y = field[pick] * share, field[pick + 1] * share
-        part[0, t] += field[pick + 2] * share
-        part[1, t] += own_x * cosine + own_y * sine
-        part[2, t] += -own_x * sine + own_y * cosine
-        if part.shape[0] > 3:
+        tile[0, row, t] += field[pick + 2] * share
+        tile[1, row, t] += own_x * cosine + own_y * sine
+        tile[2, row, t] += -own_x * sine + own_y * cosine
+        if tile.shape[0] > 3:
             slopes = box_surface_gradient(x0, x1, y0, y1, top, bottom, poisson)
             exx, eyy = slopes[first] * share, slopes[first + 1] * share
             exy = slopes[first + 2] * share
             gx, gy = slopes[first + 3] * share, slopes[first + 4] * share
-            part[3, t] += gx * cosine + gy * sine
-            part[4, t] += -gx * sine + gy * cosine
-            part[5, t] += exx * cosine * cosine + eyy * sine * sine + 2 * exy * sine * cosine
-            part[6, t] += exx * sine * sine + eyy * cosine * cosine - 2 * exy * sine * cosine
-            part[7, t] += (eyy - exx) * sine * cosine + exy * (cosine * cosine - sine * sine)
+            tile[3, row, t] += gx * cosine + gy * sine
+            tile[4, row, t] += -gx * sine + gy * cosine
+            tile[5, row, t] += exx * cosine * cosine + eyy * sine * sine + 2 * exy * sine * cosine
+            tile[6, row, t] += exx * sine * sine + eyy * cosine * cosine - 2 * exy * sine * cosine
+            tile[7, row, t] += (eyy - exx) * sine * cosine + exy * (cosine * cosine - sine * sine)
 
 
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _fill_table(part: np.ndarray, x: np.ndarray, y: np.ndarray, points: np.ndarray,
-                depths: np.ndarray, weights: np.ndarray, step: float, coefficients: np.ndarray,
-                mixed: np.ndarray) -> None:
+def _fill_table(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
+                points: np.ndarray, depths: np.ndarray, weights: np.ndarray, step: float,
+                coefficients: np.ndarray, mixed: np.ndarray) -> None:
     """A cell as weighted points, any earth model by its radial table.
 
     `coefficients (depth, function, interval, 4)`: cubic pieces over asinh(radius/depth); functions
@@ -201,17 +199,17 @@ def _fill_table(part: np.ndarray, x: np.ndarray, y: np.ndarray, points: np.ndarr
             e = dx / r if r > 0.0 else 0.0
             m = dy / r if r > 0.0 else 0.0
             scale = weight / (depth * depth)
-            part[0, t] += scale * value[1]
-            part[1, t] += scale * value[0] * e
-            part[2, t] += scale * value[0] * m
-            if part.shape[0] > 3:
+            tile[0, row, t] += scale * value[1]
+            tile[1, row, t] += scale * value[0] * e
+            tile[2, row, t] += scale * value[0] * m
+            if tile.shape[0] > 3:
                 scale /= depth
-                part[3, t] += scale * value[4] * e
-                part[4, t] += scale * value[4] * m
+                tile[3, row, t] += scale * value[4] * e
+                tile[4, row, t] += scale * value[4] * m
                 bend = value[2] - value[3]
-                part[5, t] += scale * (value[3] + bend * e * e)
-                part[6, t] += scale * (value[3] + bend * m * m)
-                part[7, t] += scale * bend * e * m
+                tile[5, row, t] += scale * (value[3] + bend * e * e)
+                tile[6, row, t] += scale * (value[3] + bend * m * m)
+                tile[7, row, t] += scale * bend * e * m
 
 
 @njit(cache=True)

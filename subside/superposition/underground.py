@@ -1,8 +1,10 @@
 """Influence of unit cells on targets below the surface of a homogeneous half-space.
 
 Far cells are Gauss points; the order follows from size over distance. Near cells and the one that
-holds the target are exact in their singular part (contraction: Newtonian attraction of the box or
-of the hexahedron; closure: the closing box), and the smooth image part is by Gauss points.
+holds the target are exact in their full-space part (closed forms for boxes and for hexahedra with
+plane faces; a twisted hexahedron is cut where it is near until its parts are plane enough). What
+the free surface adds to them, their image above the ground, is by Gauss points again, and cut
+where the image is near.
 """
 
 from __future__ import annotations
@@ -13,17 +15,24 @@ import numpy as np
 from numba import njit, prange
 
 from subside.earth.box import box_depth
-from subside.earth.crack_box import crack_box_full_space, crack_full_space
+from subside.earth.crack_body import (
+    crack_box_full_space,
+    crack_full_space,
+    crack_hexahedron_full_space,
+)
 from subside.earth.half_space import closure_depth, contraction_depth
-from subside.earth.polyhedron import contraction_hexahedron_depth
+from subside.earth.polyhedron import hexahedron_attraction
 from subside.superposition.hexahedron import octant_of, sample_cell, volume_of
 from subside.superposition.rule import MAX_ORDER
 
 __all__ = ["add_underground"]
 
-_IMAGE_ORDER = 6
-_SPLITS = 4
-"""Times a closing hexahedron near the target is halved before its parts are taken as boxes."""
+_SPLITS = 12
+"""Times a near hexahedron may be halved."""
+_HALF_SPACE, _FULL_SPACE, _IMAGE = 0, 1, 2
+"""Kernels: all of it, without the free surface, and what the free surface adds."""
+_FACES = np.array([[0, 1, 2, 3], [4, 5, 6, 7], [0, 1, 5, 4], [1, 2, 6, 5], [2, 3, 7, 6],
+                   [3, 0, 4, 7]])
 
 
 @njit(cache=True, parallel=True)
@@ -44,17 +53,14 @@ def add_underground(result: np.ndarray, x: np.ndarray, y: np.ndarray, z: np.ndar
                             + (z[t] - centre[2]) ** 2)
             order = _order(gap, reach, tolerance)
             if order <= MAX_ORDER:
-                down, east, north = _by_points(hexa, order, x[t], y[t], z[t], closure, poisson)
+                down, east, north = _by_points(hexa, order, x[t], y[t], z[t], closure, poisson,
+                                               _HALF_SPACE)
             elif is_box:
-                down, east, north = _near_box(hexa, boxes[c], x[t], y[t], z[t], closure, poisson)
-            elif not closure:
-                point = np.array([x[t], y[t], z[t]])
-                east, north, down = contraction_hexahedron_depth(hexa, point, poisson,
-                                                                 _IMAGE_ORDER)
-                volume = volume_of(hexa)
-                down, east, north = down / volume, east / volume, north / volume
+                down, east, north = _near_box(hexa, boxes[c], x[t], y[t], z[t], closure, poisson,
+                                              tolerance)
             else:
-                down, east, north = _near_closing(hexa, x[t], y[t], z[t], poisson, tolerance)
+                down, east, north = _near_hexahedron(hexa, x[t], y[t], z[t], closure, poisson,
+                                                     tolerance)
             for k in range(moment.shape[1]):
                 result[0, k, t] += down * moment[c, k]
                 result[1, k, t] += east * moment[c, k]
@@ -86,7 +92,7 @@ def _order(gap: float, reach: float, tolerance: float) -> int:
         return MAX_ORDER + 1
     ratio = gap / reach
     rho = ratio + math.sqrt(ratio * ratio - 1.0)
-    return max(1, int(math.ceil(math.log(10.0 / tolerance) / (2.0 * math.log(rho)))))
+    return max(1, math.ceil(math.log(10.0 / tolerance) / (2.0 * math.log(rho))))
 
 
 @njit(cache=True)
@@ -96,26 +102,64 @@ def _rule(order: int) -> np.ndarray:
 
 @njit(cache=True)
 def _by_points(hexa: np.ndarray, order: int, x: float, y: float, z: float, closure: bool,
-               poisson: float) -> tuple[float, float, float]:
+               poisson: float, kernel: int) -> tuple[float, float, float]:
+    """Down, east, north of unit strength by Gauss points."""
     points = sample_cell(hexa, _rule(order))
     down = east = north = 0.0
     for n in range(points.shape[0]):
         dx, dy, depth, weight = x - points[n, 0], y - points[n, 1], points[n, 2], points[n, 3]
-        r = math.sqrt(dx * dx + dy * dy)
-        if closure:
-            outward, deeper = closure_depth(r, z, depth, poisson)
+        if kernel == _FULL_SPACE:
+            e, m, d = _full_space(dx, dy, z - depth, closure, poisson)
+        elif kernel == _IMAGE:
+            over_r, d = _image(dx * dx + dy * dy, z, depth, closure, poisson)
+            e, m = over_r * dx, over_r * dy
         else:
-            outward, deeper = contraction_depth(r, z, depth, poisson)
-        down += weight * deeper
-        if r > 0.0:
-            east += weight * outward * dx / r
-            north += weight * outward * dy / r
+            r = math.sqrt(dx * dx + dy * dy)
+            if closure:
+                outward, d = closure_depth(r, z, depth, poisson)
+            else:
+                outward, d = contraction_depth(r, z, depth, poisson)
+            e = outward * dx / r if r > 0.0 else 0.0
+            m = outward * dy / r if r > 0.0 else 0.0
+        down += weight * d
+        east += weight * e
+        north += weight * m
     return down, east, north
 
 
 @njit(cache=True)
+def _full_space(east: float, north: float, below: float, closure: bool, poisson: float) -> tuple[
+        float, float, float]:
+    """East, north, down per m3 of a point source without the free surface."""
+    if closure:
+        return crack_full_space(east, north, below, poisson)
+    f = -0.25 / math.pi / (east * east + north * north + below * below) ** 1.5
+    return f * east, f * north, f * below
+
+
+@njit(cache=True)
+def _image(r2: float, z: float, c: float, closure: bool, poisson: float) -> tuple[float, float]:
+    """(outward/r, down) per m3 that the free surface adds: the terms in 1/R2 of `half_space`."""
+    s = z + c
+    i2 = 1.0 / (r2 + s * s)
+    b3 = i2 * math.sqrt(i2)
+    b5 = b3 * i2
+    if not closure:
+        kappa = 3.0 - 4.0 * poisson
+        f = -0.25 / math.pi
+        return (f * (kappa * b3 - 6.0 * z * s * b5),
+                f * (-(kappa * s - 2.0 * z) * b3 - 6.0 * z * s * s * b5))
+    m = 1.0 - 2.0 * poisson
+    f = -0.125 / (math.pi * (1.0 - poisson))
+    b7 = 30.0 * z * c * s * s * b5 * i2
+    p5 = 3.0 * s * s + 6.0 * (m * c - z) * s + 6.0 * z * c
+    q5 = 3.0 * s * s * (s - 2.0 * (1.0 + m) * c - 2.0 * z) + 18.0 * z * c * s
+    return f * (m * b3 + p5 * b5 - b7), f * (-m * (z - c) * b3 + q5 * b5 - s * b7)
+
+
+@njit(cache=True)
 def _near_box(hexa: np.ndarray, box: np.ndarray, x: float, y: float, z: float, closure: bool,
-              poisson: float) -> tuple[float, float, float]:
+              poisson: float, tolerance: float) -> tuple[float, float, float]:
     """Exact box; of a closing one the image part is by Gauss points."""
     bx, by, top, bottom, dx, dy, azimuth = box
     cosine = math.cos(math.radians(azimuth))
@@ -132,54 +176,47 @@ def _near_box(hexa: np.ndarray, box: np.ndarray, x: float, y: float, z: float, c
     north = share * (-own_x * sine + own_y * cosine)
     down *= share
     if closure:
-        image = _image(hexa, x, y, z, poisson)
-        return down + image[0], east + image[1], north + image[2]
+        added = _in_parts(hexa, x, y, z, closure, poisson, tolerance, _IMAGE)
+        return down + added[0], east + added[1], north + added[2]
     return down, east, north
 
 
 @njit(cache=True)
-def _image(hexa: np.ndarray, x: float, y: float, z: float, poisson: float) -> tuple[
-        float, float, float]:
-    """What the free surface adds to a closing body: half-space minus full space."""
-    points = sample_cell(hexa, _rule(_IMAGE_ORDER))
-    down = east = north = 0.0
-    for n in range(points.shape[0]):
-        dx, dy, depth, weight = x - points[n, 0], y - points[n, 1], points[n, 2], points[n, 3]
-        if dx == 0.0 and dy == 0.0 and z == depth:
-            dx = 1e-6 * depth
-        r = math.sqrt(dx * dx + dy * dy)
-        outward, deeper = closure_depth(r, z, depth, poisson)
-        full_east, full_north, full_down = crack_full_space(dx, dy, z - depth, poisson)
-        down += weight * (deeper - full_down)
-        if r > 0.0:
-            east += weight * (outward * dx / r - full_east)
-            north += weight * (outward * dy / r - full_north)
-    return down, east, north
+def _near_hexahedron(hexa: np.ndarray, x: float, y: float, z: float, closure: bool, poisson: float,
+                     tolerance: float) -> tuple[float, float, float]:
+    """Full-space part and image part, each cut as finely as it needs."""
+    own = _in_parts(hexa, x, y, z, closure, poisson, tolerance, _FULL_SPACE)
+    added = _in_parts(hexa, x, y, z, closure, poisson, tolerance, _IMAGE)
+    return own[0] + added[0], own[1] + added[1], own[2] + added[2]
 
 
 @njit(cache=True)
-def _near_closing(hexa: np.ndarray, x: float, y: float, z: float, poisson: float,
-                  tolerance: float) -> tuple[float, float, float]:
-    """A closing hexahedron near the target: halved where near, the last parts taken as boxes."""
-    stack = np.empty((8 * _SPLITS + 8, 8, 3))
-    level = np.empty(8 * _SPLITS + 8, dtype=np.int64)
+def _in_parts(hexa: np.ndarray, x: float, y: float, z: float, closure: bool, poisson: float,
+              tolerance: float, kernel: int) -> tuple[float, float, float]:
+    """A hexahedron cut in eight where the kernel's singularity is near: at the target, for the
+    image at the target's mirror place above the ground."""
+    singular = -z if kernel == _IMAGE else z
+    stack = np.empty((7 * _SPLITS + 8, 8, 3))
+    level = np.empty(stack.shape[0], dtype=np.int64)
     stack[0] = hexa
     level[0] = 0
     size = 1
     total = volume_of(hexa)
+    reach = _middle(hexa)[1]
+    allowed = tolerance * total / (reach * reach)  # the twist that does not matter, m
     down = east = north = 0.0
     while size > 0:
         size -= 1
         part = stack[size].copy()
         depth = level[size]
         centre, reach = _middle(part)
-        gap = math.sqrt((x - centre[0]) ** 2 + (y - centre[1]) ** 2 + (z - centre[2]) ** 2)
+        gap = math.sqrt((x - centre[0]) ** 2 + (y - centre[1]) ** 2 + (singular - centre[2]) ** 2)
         order = _order(gap, reach, tolerance)
         share = volume_of(part) / total
-        if order <= MAX_ORDER:
-            d, e, m = _by_points(part, order, x, y, z, True, poisson)
-        elif depth == _SPLITS:
-            d, e, m = _near_box(part, _as_box(part), x, y, z, True, poisson)
+        if order <= MAX_ORDER or (kernel == _IMAGE and depth == _SPLITS):
+            d, e, m = _by_points(part, min(order, MAX_ORDER), x, y, z, closure, poisson, kernel)
+        elif kernel == _FULL_SPACE and (depth == _SPLITS or _bulge(part) <= allowed):
+            d, e, m = _exact_full_space(part, x, y, z, closure, poisson)
         else:
             for octant in range(8):
                 stack[size] = octant_of(part, octant)
@@ -193,15 +230,23 @@ def _near_closing(hexa: np.ndarray, x: float, y: float, z: float, poisson: float
 
 
 @njit(cache=True)
-def _as_box(hexa: np.ndarray) -> np.ndarray:
-    """The upright box of the same centre, azimuth and volume (its sides as the mean edges)."""
-    along = (hexa[1] - hexa[0] + hexa[2] - hexa[3] + hexa[5] - hexa[4] + hexa[6] - hexa[7]) / 4.0
-    across = (hexa[3] - hexa[0] + hexa[2] - hexa[1] + hexa[7] - hexa[4] + hexa[6] - hexa[5]) / 4.0
-    centre = _middle(hexa)[0]
-    dx = math.sqrt(along[0] ** 2 + along[1] ** 2)
-    dy = math.sqrt(across[0] ** 2 + across[1] ** 2)
-    height = volume_of(hexa) / (dx * dy)
-    # the box's own x points along (cos, -sin) of its azimuth
-    azimuth = math.degrees(math.atan2(-along[1], along[0]))
-    return np.array([centre[0], centre[1], centre[2] - height / 2, centre[2] + height / 2,
-                     dx, dy, azimuth])
+def _bulge(hexa: np.ndarray) -> float:
+    """How far a bilinear face lies from the four triangles about its centre, at most, m."""
+    largest = 0.0
+    for face in range(6):
+        a, b, c, d = _FACES[face]
+        twist = hexa[a] - hexa[b] + hexa[c] - hexa[d]
+        largest = max(largest, math.sqrt((twist**2).sum()) / 16.0)
+    return largest
+
+
+@njit(cache=True)
+def _exact_full_space(hexa: np.ndarray, x: float, y: float, z: float, closure: bool,
+                      poisson: float) -> tuple[float, float, float]:
+    point = np.array([x, y, z])
+    if closure:
+        moved = crack_hexahedron_full_space(hexa, point, poisson)
+    else:
+        moved = 0.25 / math.pi * hexahedron_attraction(hexa, point)
+    volume = volume_of(hexa)
+    return moved[2] / volume, moved[0] / volume, moved[1] / volume

@@ -187,7 +187,7 @@ def test_run_as_json(field, subside):
     assert volumes["south"] == pytest.approx(4.5e6 * 1e-10 * 3 * 10e6, rel=1e-12)
     assert volumes["north"] == pytest.approx(4.5e6 * 1e-10 * (2 * 10e6 + 9e6), rel=1e-12)
     assert facts["files"] == [str(field / name) for name in (
-        "scenario.nc", "scenario-bowl.png", "scenario-curves.png")]
+        "scenario.nc", "scenario-map.png", "scenario-curves.png")]
     assert facts["cautions"] == list(CAUTIONS)
     assert facts["map_pixels"] == [4, 4]
 
@@ -387,7 +387,7 @@ def test_the_scenario_of_init_runs(tmp_path, subside):
     assert (ended.code, ended.err) == (0, "")
     result = sd.read_result(tmp_path / "field" / "results" / "bowl.nc")
     assert 0.001 < float(result["max_subsidence"][-1]) < 0.1
-    assert (tmp_path / "field" / "results" / "bowl-bowl.png").is_file()
+    assert (tmp_path / "field" / "results" / "bowl-map.png").is_file()
 
 
 # -- in Python ---------------------------------------------------------------------------------

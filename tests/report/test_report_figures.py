@@ -268,7 +268,7 @@ def test_a_survey_without_its_columns_is_refused() -> None:
 
 def test_files_know_what_they_were_made_from(tmp_path: Path) -> None:
     files = save_figures(bowl(), tmp_path / "out" / "base", overwrite=False)
-    assert files == [tmp_path / "out" / "base-bowl.png", tmp_path / "out" / "base-curves.png"]
+    assert files == [tmp_path / "out" / "base-map.png", tmp_path / "out" / "base-curves.png"]
     assert [made_from(file) for file in files] == ["heron-flats.toml"] * 2
     (tmp_path / "text.png").write_text("no picture")
     assert made_from(tmp_path / "text.png") is None

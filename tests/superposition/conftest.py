@@ -1,0 +1,8 @@
+"""So that the tests of this folder find `sources`."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+sys.path.insert(0, str(Path(__file__).parent))
