@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -16,7 +17,7 @@ _TARGETS = 200
 _FEWEST = 80
 _EVALUATIONS = 5e8
 """Cells' sample points times targets beyond which fewer targets are taken, never below `_FEWEST`:
-the check must not cost more than what it checks."""
+the check must not cost more than what it checks. A tenth of it where the kernel is a table."""
 _BLOCKS = 5
 """The map is cut into as many parts each way, and each has a target of its own."""
 _GROUPS = (DISPLACEMENT, ("down_by_east", "down_by_north"),
@@ -41,13 +42,14 @@ class Check:
 
     @classmethod
     def of(cls, field: Fields, rough: np.ndarray, cells: SampledCells, bodies: Bodies,
-           moments: dict[str, np.ndarray], targets: Targets, earth: object, sampling: float,
+           moments: dict[str, np.ndarray], targets: Targets, earth: Any, sampling: float,
            gradient: bool) -> Check:
         """Choose and sum; `rough (target,)` says how ill a target lies on the lattice.
 
         `cells` are those that lose volume; `sampling` as in `plain_sum`.
         """
-        count = int(np.clip(_EVALUATIONS / cells.points.sum(), _FEWEST, _TARGETS))
+        pairs = _EVALUATIONS * (0.1 if earth.homogeneous_poisson_ratio is None else 1.0)
+        count = int(np.clip(pairs / cells.points.sum(), _FEWEST, _TARGETS))
         lowest = cells.extent[cells.top.argmin()]
         steps = _steps(field)
         size = np.max([np.abs(field[name][steps]) for name in DISPLACEMENT], axis=(0, 1))

@@ -20,7 +20,7 @@ from subside.superposition.rule import surface_rule
 from subside.superposition.sampled import MANY_POINTS, part_of
 from subside.superposition.sampling import points_in, sample_into
 from subside.superposition.table import RadialTable
-from subside.superposition.tiles import _fill_points
+from subside.superposition.tiles import fill_points
 
 __all__ = ["plain_sum"]
 
@@ -98,7 +98,7 @@ def _sum(components: int, x: np.ndarray, y: np.ndarray, corners: np.ndarray, rul
                 _fill_from_table(tile, cell - first, x, y, points[:count], depths, weights, step,
                                  coefficients, share)
             else:
-                _fill_points(tile, cell - first, x, y, points[:count], closure, poisson)
+                fill_points(tile, cell - first, x, y, points[:count], closure, poisson)
         for c in range(components):
             local[c] = np.dot(moment[first:last].T, tile[c])
         total += local

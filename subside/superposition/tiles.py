@@ -20,7 +20,7 @@ from subside.earth.half_space import (
 )
 from subside.superposition.hexahedron import sample_cell
 
-__all__ = ["add_surface"]
+__all__ = ["add_surface", "fill_points"]
 
 _CHUNK = 64
 
@@ -68,7 +68,7 @@ def add_surface(result: np.ndarray, width: int, x: np.ndarray, y: np.ndarray, co
                     _fill_table(tile, row, tx, ty, points, depths, weights, step, coefficients,
                                 mixed)
                 else:
-                    _fill_points(tile, row, tx, ty, points, closure, poisson)
+                    fill_points(tile, row, tx, ty, points, closure, poisson)
             strength = moment[start:stop].T
             for k in range(components):
                 local[k] += np.dot(strength, tile[k, :stop - start])
@@ -81,7 +81,7 @@ def add_surface(result: np.ndarray, width: int, x: np.ndarray, y: np.ndarray, co
 
 
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _fill_points(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
+def fill_points(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
                  points: np.ndarray, closure: bool, poisson: float) -> None:
     """A cell as weighted points in a homogeneous half-space."""
     size = x.size
