@@ -216,12 +216,15 @@ def _superpose(job: Job, compaction: Compaction, grid: MapGrid | None,
     pairs = float(job.bodies.count) * len(moments) * (size + at_points.x.size + regions * size)
     record = SolverRecord()
     region_fields = []
-    with progress.stage("superposition", pairs, "pairs") as advance:
+    with progress.stage("superposition", job.bodies.count, "cells") as advance:
+
+        def advance_pairs(done: float) -> None:
+            advance(done / pairs * job.bodies.count)
 
         def solve(moments: Mapping[str, np.ndarray], targets: Targets, gradient: bool) -> Fields:
             solver = job.plan(targets.x.size, len(moments)).solver()
             field = solver.solve(job.bodies, moments, targets, job.earth, gradient=gradient,
-                                 tolerance=job.scenario.solver.tolerance, progress=advance)
+                                 tolerance=job.scenario.solver.tolerance, progress=advance_pairs)
             record.note(solver)
             return field
 

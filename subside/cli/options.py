@@ -72,6 +72,6 @@ def bars(quiet: bool) -> Iterator[Progress]:
     from rich.progress import Progress as RichProgress
 
     columns = (TextColumn("{task.description:>13}"), BarColumn(bar_width=32), TaskProgressColumn(),
-               TextColumn("of {task.total:.4g} {task.fields[unit]}"), TimeRemainingColumn())
+               TextColumn("of {task.total:,.0f} {task.fields[unit]}"), TimeRemainingColumn())
     with RichProgress(*columns, console=Console(stderr=True), transient=True) as progress:
         yield _Bars(progress)
