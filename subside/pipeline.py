@@ -65,8 +65,8 @@ class Job:
     def expected_pixels(self) -> int:
         """Size of the map: exact where bounds are given, else from the usual reach of a bowl."""
         table = self.scenario.map
-        corners = self.cells["centroid"].values
-        low, high = corners.min(axis=0), corners.max(axis=0)
+        centres = self.cells["centroid"].values
+        low, high = centres.min(axis=0), centres.max(axis=0)
         unit = float(self.cells.attrs["xy_unit_in_m"])
         if table is None or table.bounds is None:
             # a point source falls to 1 % of its peak at 4.5 depths
@@ -136,7 +136,7 @@ def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
                       *filter(None, [cut_off_text(edge)])],
         )
         if job.wants_map:
-            job.expected_pixels()
+            job.expected_pixels()  # refuses bounds that make no map
     return job
 
 

@@ -75,7 +75,7 @@ def _date(value: object, info: ValidationInfo) -> dt.datetime:
             raise InputError(f"{info.field_name} = {value!r} is not a date; "
                              "write YYYY-MM-DD, for example \"1990-01-01\".") from None
     if parsed.tzinfo is not None:
-        raise InputError(f"{info.field_name} = {value!r} has a time zone; leave it out.")
+        raise InputError(f"{info.field_name} = '{value}' has a time zone; leave it out.")
     if not 1700 <= parsed.year <= 2250:
         raise InputError(f"{info.field_name} = {str(value)!r} lies outside the years 1700 to 2250.")
     return parsed
@@ -255,7 +255,8 @@ def _explain(error: ValidationError, data: dict[str, Any]) -> str:
     if first["type"] == "extra_forbidden":
         return f"unknown key '{words}'.{nearest(str(location[-1]), _known_keys(location))}"
     if first["type"] == "missing":
-        return f"key '{words}' is missing."
+        return (f"key '{words}' is missing; add it (`subside init DIR` writes a scenario that "
+                "shows how).")
     value = first.get("input")
     shown = f" = {value!r}" if isinstance(value, (str, int, float, bool, list)) else ""
     return f"{words}{shown}: {first['msg'][0].lower()}{first['msg'][1:]}."

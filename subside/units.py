@@ -157,8 +157,9 @@ def parse_quantity(value: object, si_unit: str, *, name: str, unit_needed: bool 
                          f"for example \"1 {si_unit}\".")
     if isinstance(value, (int, float)):
         if unit_needed and value != 0:
+            example = {"s": "year", "Pa/s": "bar/year", "1/s": "1/year"}.get(si_unit, si_unit)
             raise InputError(f"{name} = {value!r} has no unit; times and rates need one, "
-                             f"for example \"{value} year\".")
+                             f"for example \"{value} {example}\".")
         number, unit = float(value), si_unit
     else:
         match = re.fullmatch(rf"\s*({_NUMBER}|[-+]?inf|nan)\s*(.*?)\s*", value)

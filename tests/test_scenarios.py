@@ -54,5 +54,4 @@ def test_the_field_behaves_as_its_story_says(field) -> None:
     lost_on_map = float(result["compaction"][-1].sum()) * float(
         abs(result["x"][1] - result["x"][0])) ** 2
     assert lost_on_map == pytest.approx(total, rel=1e-4)  # the map covers the field
-    assert float(result["edge_depletion"] if "edge_depletion" in result
-                 else result.attrs["edge_depletion"]) < 0.05
+    assert float(result.attrs["edge_depletion"]) < 0.05

@@ -80,7 +80,7 @@ def _guarded(job: Callable[[], Any], debug: bool) -> int:
         _say(error.format_message() + see, debug)
         return 2
     except click.Abort:
-        _say("stopped by the user; nothing was written under a final name.", debug)
+        _say("stopped by the user; no half-written file was left behind.", debug)
         return 3
     except SubsideError as error:
         _say(str(error), debug)

@@ -87,10 +87,6 @@ class Block:
             for name, value in self._arrays.items()
         })
 
-    def value_of_cells(self, name: str) -> np.ndarray | float | None:
-        """One parameter for all cells of the block."""
-        return self._arrays[name]
-
     def _release(self, regions: list[str]) -> Any:
         raw = self.table.horizontal_release
         if raw in ("matched", "own"):

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
+from subside.api import Reader, hookimpl
 from subside.grid.netcdf import NetcdfGrid
-from subside.hooks.contracts import Reader
-from subside.hooks.specs import hookimpl
 
 __all__ = ["subside_grid_readers"]
 

@@ -86,7 +86,8 @@ def plan_map(
         for count, word in ((columns, "xmax - xmin"), (rows, "ymax - ymin")):
             if abs(count - round(count)) > 1e-6 * max(count, 1.0):
                 raise InputError(f"[map] bounds: {word} is {count * step:g} m, which is not a "
-                                 f"whole multiple of the spacing {step:g} m.")
+                                 f"whole multiple of the spacing {step:g} m; make it "
+                                 f"{math.ceil(count) * step:g} m, or change the spacing.")
         return _grid(west, north, step, round(columns), round(rows))
     west, south, east, north = _reach(low, high, depth, subsidence_at)
     step = spacing or round_spacing(depth, max(east - west, north - south))
