@@ -14,8 +14,9 @@ import xarray as xr
 
 from subside.compaction.apply import Compaction
 from subside.compaction.rock import Block
+from subside.errors import PluginError, SubsideError
 from subside.export.grid_mapping import axis_unit, projected_crs
-from subside.hooks.contracts import EarthModel
+from subside.hooks.contracts import EarthModel, Quantity
 from subside.hooks.registry import registry
 from subside.names import CAUTIONS, RESULT_VARIABLES
 from subside.observe.footprint import footprint_matrix
@@ -70,10 +71,22 @@ def assemble(parts: Parts) -> xr.Dataset:
     _add_cells(result, parts)
     _add_bowl(result, parts)
     for quantity in parts.request.quantities:
-        result[quantity.name] = quantity.compute(result).transpose("time", ...)
+        result[quantity.name] = _computed(quantity, result)
         _describe(result, quantity.name, quantity.unit, quantity.long_name)
     unwanted = [n for n in GRADIENT_NAMES if n in result and n not in parts.request.names]
     return result.drop_vars(unwanted)
+
+
+def _computed(quantity: Quantity, result: xr.Dataset) -> xr.DataArray:
+    """A plug-in's variable; what goes wrong in it is said to be its fault."""
+    try:
+        return quantity.compute(result).transpose("time", ...)
+    except SubsideError:
+        raise
+    except Exception as error:
+        raise PluginError(f"quantity '{quantity.name}' failed with {type(error).__name__}: "
+                          f"{error}; leave it out of [output] quantities and tell its author."
+                          ) from error
 
 
 def _describe(result: xr.Dataset, name: str, unit: str = "", long_name: str = "") -> None:
@@ -211,6 +224,7 @@ def _record(parts: Parts) -> dict[str, str | float]:
         "title": scenario.title or scenario.path.stem,
         "crs_wkt": wkt,
         "xy_unit": axis_unit(projected_crs(wkt)) if wkt else "m",
+        "grid_name": scenario.grid[0].name,
         "time_start": str(parts.timeline.start),
         "vertical_datum": str(cells.attrs.get("vertical_datum", "")) or "not stated by the grid",
         "scenario": scenario.text,

@@ -67,12 +67,12 @@ class HalfSpace(_Uniform):
     def gradient(self, source: str, radius: np.ndarray, observation_depth: np.ndarray,
                  source_depth: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         return half_space.gradient(source, radius, observation_depth, source_depth,
-                                   self.poisson_ratio)
+                                   self.poisson_ratio, self._shear_modulus())
 
     def volume_ratio(self, source: str, source_depth: np.ndarray) -> np.ndarray:
         """2(1-nu) for the nucleus, 1 for the crack, whatever the depth."""
-        ratio = 2 * (1 - self.poisson_ratio) if source == "contraction" else 1.0
-        return np.full(np.shape(source_depth), ratio)
+        return np.full(np.shape(source_depth),
+                       half_space.volume_ratio(source, self.poisson_ratio))
 
 
 class RigidBasement(_Uniform):
@@ -105,17 +105,18 @@ class RigidBasement(_Uniform):
                      source_depth: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         self._at_surface(observation_depth)
         return rigid_basement.displacement(source, radius, source_depth, self.poisson_ratio,
-                                           self.basement_depth)
+                                           self.basement_depth, self._shear_modulus())
 
     def gradient(self, source: str, radius: np.ndarray, observation_depth: np.ndarray,
                  source_depth: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         self._at_surface(observation_depth)
         return rigid_basement.gradient(source, radius, source_depth, self.poisson_ratio,
-                                       self.basement_depth)
+                                       self.basement_depth, self._shear_modulus())
 
     def volume_ratio(self, source: str, source_depth: np.ndarray) -> np.ndarray:
         """1 for both sources: nothing is lost below a base that does not move."""
-        return np.ones(np.shape(source_depth))
+        return np.full(np.shape(source_depth),
+                       rigid_basement.volume_ratio(source, self.poisson_ratio))
 
 
 @hookimpl

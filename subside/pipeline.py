@@ -18,6 +18,7 @@ from subside.compaction.apply import Compaction, compact
 from subside.compaction.rock import Block, assign_blocks, place
 from subside.earth_setup import make_earth
 from subside.errors import InputError, located
+from subside.export.grid_mapping import axis_unit, grid_mapping, projected_crs
 from subside.grid import open_grid
 from subside.grid.geometry import corners_of_boxes
 from subside.grid.summary import cut_off_text, edge_depletion
@@ -135,6 +136,11 @@ def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
             warnings=[*cells.attrs["warnings"], *timeline.warnings,
                       *filter(None, [cut_off_text(edge)])],
         )
+        _can_be_written(str(cells.attrs["crs_wkt"]), f"grid '{grid.file}'")
+        if not job.wants_map and request.maps:
+            raise InputError(f"[output] quantities: '{request.maps[0]}' is a map, and this "
+                             "scenario makes none because it names points; add [map], or leave "
+                             "it out.")
         if job.wants_map:
             job.expected_pixels()  # refuses bounds that make no map
     return job
@@ -275,6 +281,15 @@ def _bodies(cells: xr.Dataset, surface: float) -> Bodies:
     boxes = np.column_stack(columns)
     boxes[:, 2:4] -= surface
     return Bodies(boxes.shape[0], lambda index: corners_of_boxes(*boxes[index].T), boxes)
+
+
+def _can_be_written(wkt: str, where: str) -> None:
+    """Not every coordinate system can be written so that a GIS reads it: before the long run."""
+    if wkt:
+        with located(where):
+            crs = projected_crs(wkt)
+            axis_unit(crs)
+            grid_mapping(crs)
 
 
 def _can_be_observed(points: Points, earth: EarthModel, source_depth: float) -> None:

@@ -258,6 +258,9 @@ def _explain(error: ValidationError, data: dict[str, Any]) -> str:
         return (f"key '{words}' is missing; add it (`subside init DIR` writes a scenario that "
                 "shows how).")
     value = first.get("input")
+    if words == "grid.file" and isinstance(value, list):
+        return ("grid.file is a list; this version takes one file for each grid. Join the files "
+                "along time into one.")
     shown = f" = {value!r}" if isinstance(value, (str, int, float, bool, list)) else ""
     return f"{words}{shown}: {first['msg'][0].lower()}{first['msg'][1:]}."
 

@@ -65,10 +65,11 @@ def print_summary(result: xr.Dataset, files: Sequence[Path]) -> None:
     if facts["max_uplift_m"] > 0.0005:
         rows.append(("largest uplift", f"{_length(facts['max_uplift_m'])} on "
                      f"{facts['max_uplift_date']}"))
-    rows.append(("bowl volume", f"{_volume(facts['bowl_volume_m3'])} in all"
+    last = facts["last_date"]
+    rows.append((f"bowl volume {last}", f"{_volume(facts['bowl_volume_m3'])} in all"
                  + (f", {_volume(facts['bowl_volume_map_m3'])} on the map"
                     if "bowl_volume_map_m3" in facts else "")))
-    rows += [(f"volume lost, {name}", _volume(value))
+    rows += [(f"lost by {name}", _volume(value))
              for name, value in facts["region_compaction_volume_m3"].items()]
     rows.append(("depletion at edge", f"{100 * facts['edge_depletion']:.1f} % of the largest"))
     if "map_pixels" in facts:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from subside.api import InputError, Quantity
 from subside.errors import nearest
 from subside.hooks.registry import registry
+from subside.names import RESULT_VARIABLES
 
 __all__ = ["GRADIENT_NAMES", "Request", "read_request"]
 
@@ -32,6 +33,8 @@ class Request:
         Whether the solver must return horizontal derivatives.
     by_region, by_cell : bool
         Whether `region_subsidence`, `cell_compaction` are wanted.
+    maps : tuple of str
+        Those that exist on a map only.
     """
 
     names: tuple[str, ...]
@@ -39,6 +42,7 @@ class Request:
     gradient: bool
     by_region: bool
     by_cell: bool
+    maps: tuple[str, ...]
 
 
 def read_request(names: list[str]) -> Request:
@@ -50,12 +54,14 @@ def read_request(names: list[str]) -> Request:
         For a name that no quantity has.
     """
     offered = registry.all("quantity")
-    always = {"subsidence", "displacement_east", "displacement_north", "compaction"}
-    known = {*offered, *GRADIENT_NAMES, "region_subsidence", "cell_compaction", *always}
+    known = {*offered, *RESULT_VARIABLES}
     for name in names:
         if name not in known:
             raise InputError(f"[output] quantities: '{name}' is not known." + nearest(name, known))
     chosen = tuple(offered[n].cls() for n in names if n in offered)
     needed = {*names, *(need for quantity in chosen for need in quantity.needs)}
+    on_map = {name for name, variable in RESULT_VARIABLES.items() if "y" in variable.dims}
+    maps = tuple(name for name in names if name in on_map
+                 or (name in offered and on_map & set(offered[name].cls.needs)))
     return Request(tuple(names), chosen, bool(needed & set(GRADIENT_NAMES)),
-                   "region_subsidence" in names, "cell_compaction" in names)
+                   "region_subsidence" in names, "cell_compaction" in names, maps)

@@ -218,6 +218,15 @@ BROKEN: dict[str, tuple[Change, list[str]]] = {
                                                                       "finite number"]),
     "spacing zero": (more('[map]\nspacing = "0 m"\n'), ["[map] spacing = '0 m' must be above"]),
     "spacing in bar": (more('[map]\nspacing = "1 bar"\n'), ["[map] spacing", "unit of length"]),
+    "a map quantity without a map": (more('[output]\nquantities = ["tilt"]\n'),
+                                     ["[output] quantities: 'tilt' is a map", "add [map]"]),
+    "a region map without a map": (more('[output]\nquantities = ["region_subsidence"]\n'),
+                                   ["'region_subsidence' is a map", "add [map]"]),
+    "a CRS that no map file can hold": (
+        lambda folder: (write_grid(folder / "grid.nc", epsg=3377),
+                        edit(folder, 'file = "grid.nc"',
+                             'file = "grid.nc"\naccept = ["area-of-use"]')),
+        ["grid 'grid.nc'", "CRS"]),
     "unknown quantity": (more('[output]\nquantities = ["tlt"]\n'),
                          ["[output] quantities: 'tlt'", "Did you mean 'tilt'?"]),
     "output is a folder": (

@@ -12,8 +12,6 @@ from made_up_results import control_result
 from subside.errors import CannotDo, InputError
 from subside.export.geotiff import GeoTiff
 
-pytest.importorskip("rasterio")
-
 
 def test_every_map_and_date_has_a_file(tmp_path: Path) -> None:
     files = GeoTiff().export(control_result(32631), tmp_path, False)

@@ -3,13 +3,13 @@ general-purpose triangular dislocations of `cutde` (Nikkhoo & Walter 2015)."""
 
 from __future__ import annotations
 
+import cutde.halfspace as cutde
 import numpy as np
 import pytest
 
 from subside.earth import box, half_space
 
 NU = 0.25
-cutde = pytest.importorskip("cutde.halfspace")
 
 
 def okada_point_tensile(x, y, d, dip, nu=NU):

@@ -5,11 +5,10 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from choclo import prism
+from choclo.constants import GRAVITATIONAL_CONST as CONSTANT
 
 from subside.earth import box_formulas, polyhedron
-
-prism = pytest.importorskip("choclo.prism")
-CONSTANT = pytest.importorskip("choclo.constants").GRAVITATIONAL_CONST
 
 SPAN = (-1.0, 2.0, -0.5, 1.5, 1.0, 1.8)  # x, y, depth
 POINTS = [

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import cutde.fullspace as cutde
 import numpy as np
 import pytest
 from sources import boxes
@@ -106,7 +107,6 @@ def test_roof_minus_floor_of_a_thin_box_is_its_closure(nu: float) -> None:
 def test_box_is_a_stack_of_dislocations(nu: float) -> None:
     """A closing box is a stack of closing rectangles: triangular dislocations of cutde, 24 Gauss
     sheets. Triangular dislocations in a full space: Nikkhoo and Walter (2015)."""
-    cutde = pytest.importorskip("cutde.fullspace")
     place = np.array([[1.4, -0.6, 0.7], [0.2, 0.1, 1.1]])
     t, w = np.polynomial.legendre.leggauss(24)
     x0, x1, y0, y1, z0, z1 = BOX
