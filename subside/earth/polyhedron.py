@@ -14,14 +14,14 @@ the sum over faces loses digits as (distance/size)^2: 5e-10 at 1000 sizes.
 
 from __future__ import annotations
 
-from math import atan2, pi, sqrt
+from math import atan2, sqrt
 
 import numpy as np
 from numba import njit
 
-from subside.earth.box_formulas import COMPILED, GAUSS_NODES, GAUSS_WEIGHTS, LARGEST_ORDER, edge_log
+from subside.earth.box_formulas import COMPILED, edge_log
 
-__all__ = ["contraction_hexahedron_depth", "hexahedron_attraction"]
+__all__ = ["hexahedron_attraction"]
 
 # Corners of each face, all turning the same way seen from outside.
 _FACES = np.array(
@@ -139,97 +139,3 @@ def _add_triangle(p, q, s, mx, my, mz, total):  # type: ignore[no-untyped-def]
     total[1] -= ny * integral
     total[2] -= nz * integral
     return 0.5 * area2 * height
-
-
-@njit(**COMPILED)
-def contraction_hexahedron_depth(corners, point, nu, order):  # type: ignore[no-untyped-def]
-    """Contraction displacement of a hexahedron in a half-space, per unit strain.
-
-    The direct term is exact (`hexahedron_attraction`); the terms of the mirror image, which are
-    smooth below the surface, are summed over order^3 Gauss points of the trilinear cell.
-
-    Parameters
-    ----------
-    corners : ndarray (8, 3) [m]
-        x, y, depth.
-    point : ndarray (3,) [m]
-        x, y, depth of observation, depth >= 0.
-    nu : float [-]
-    order : int
-        1 to 16 Gauss points per direction; `quadrature.gauss_order` with the distance from the
-        point to the **image** gives it.
-
-    Returns
-    -------
-    ndarray (3,) [m per unit strain]
-        East, north, down.
-
-    Raises
-    ------
-    ValueError
-        An order outside 1 to 16.
-    """
-    if order < 1 or order > LARGEST_ORDER:
-        raise ValueError("the Gauss order must be 1 to 16")
-    kappa = 3.0 - 4.0 * nu
-    z = point[2]
-    ux = 0.0
-    uy = 0.0
-    uz = 0.0
-    volume = 0.0
-    shape = np.empty((8, 4))  # value and the derivatives along the three local axes
-    sums = np.empty((4, 3))
-    for i in range(order):
-        for j in range(order):
-            for k in range(order):
-                _shape_functions(
-                    GAUSS_NODES[order, i], GAUSS_NODES[order, j], GAUSS_NODES[order, k], shape
-                )
-                sums[:] = 0.0
-                for n in range(8):
-                    for m in range(4):
-                        for axis in range(3):
-                            sums[m, axis] += shape[n, m] * corners[n, axis]
-                jacobian = (
-                    sums[1, 0] * (sums[2, 1] * sums[3, 2] - sums[2, 2] * sums[3, 1])
-                    + sums[1, 1] * (sums[2, 2] * sums[3, 0] - sums[2, 0] * sums[3, 2])
-                    + sums[1, 2] * (sums[2, 0] * sums[3, 1] - sums[2, 1] * sums[3, 0])
-                )
-                weight = (
-                    GAUSS_WEIGHTS[order, i]
-                    * GAUSS_WEIGHTS[order, j]
-                    * GAUSS_WEIGHTS[order, k]
-                    * jacobian
-                )
-                volume += weight
-                dx = point[0] - sums[0, 0]
-                dy = point[1] - sums[0, 1]
-                s = z + sums[0, 2]
-                i2 = 1.0 / (dx * dx + dy * dy + s * s)
-                b3 = weight * i2 * sqrt(i2)
-                b5 = 6.0 * z * s * b3 * i2
-                ux -= dx * (kappa * b3 - b5)
-                uy -= dy * (kappa * b3 - b5)
-                uz += (kappa * s - 2.0 * z) * b3 + s * b5
-    if volume < 0.0:
-        ux, uy, uz = -ux, -uy, -uz
-    direct = hexahedron_attraction(corners, point)
-    f = 0.25 / pi
-    return np.array((f * (direct[0] + ux), f * (direct[1] + uy), f * (direct[2] + uz)))
-
-
-@njit(**COMPILED)
-def _shape_functions(u, v, w, shape):  # type: ignore[no-untyped-def]
-    """Trilinear shape functions and their derivatives at (u, v, w), each in -1..1."""
-    for n in range(8):
-        ring = n % 4
-        su = 1.0 if ring == 1 or ring == 2 else -1.0
-        sv = 1.0 if ring >= 2 else -1.0
-        sw = 1.0 if n >= 4 else -1.0
-        fu = 0.5 * (1.0 + su * u)
-        fv = 0.5 * (1.0 + sv * v)
-        fw = 0.5 * (1.0 + sw * w)
-        shape[n, 0] = fu * fv * fw
-        shape[n, 1] = 0.5 * su * fv * fw
-        shape[n, 2] = 0.5 * sv * fu * fw
-        shape[n, 3] = 0.5 * sw * fu * fv

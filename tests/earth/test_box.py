@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import box_arrays
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -133,7 +134,7 @@ def test_sheet_far_away_is_a_point():
 
 def test_sheets_stacked_are_the_box():
     x, w = np.polynomial.legendre.leggauss(40)
-    sheets = box.sheets_surface(-0.5, 2.0, 0.3, 1.0, 1.5 + 0.5 * x, NU) @ (0.5 * w)
+    sheets = box_arrays.sheets_surface(-0.5, 2.0, 0.3, 1.0, 1.5 + 0.5 * x, NU) @ (0.5 * w)
     whole = box.box_surface(-0.5, 2.0, 0.3, 1.0, 1.0, 2.0, NU)
     np.testing.assert_allclose(sheets, whole, rtol=1e-12)
 
@@ -200,7 +201,7 @@ def test_outcrop_is_finite():
     near = np.array(box.box_surface(-1.0, 1.0, -1.0, 1.0, 1e-9, 0.5, NU))
     np.testing.assert_allclose(middle, near, atol=1e-7)
     with pytest.raises(InputError, match="edge of a cell that reaches the surface"):
-        box.boxes_surface_gradient(0.0, 2.0, -1.0, 1.0, 0.0, 0.5, NU)
+        box_arrays.boxes_surface_gradient(0.0, 2.0, -1.0, 1.0, 0.0, 0.5, NU)
 
 
 def test_sheet_at_the_surface_carries_its_own_closure():
@@ -226,14 +227,14 @@ def test_splitting_changes_nothing(x, y, top, length, width, thickness, share, a
     cut = span[2 * axis] + share * (span[2 * axis + 1] - span[2 * axis])
     low, high = span.copy(), span.copy()
     low[2 * axis + 1] = high[2 * axis] = cut
-    for function in (box.boxes_surface, box.boxes_surface_gradient):
+    for function in (box_arrays.boxes_surface, box_arrays.boxes_surface_gradient):
         whole = function(*span, NU)
         parts = function(*low, NU) + function(*high, NU)
         scale = max(np.abs(function(*low, NU)).max(), np.abs(function(*high, NU)).max())
         np.testing.assert_allclose(parts, whole, atol=2e-12 * scale)
     for z in (0.0, top, top + 0.5 * thickness, top + 2 * thickness):
-        whole = box.boxes_depth(*span, z, NU)
-        parts = box.boxes_depth(*low, z, NU) + box.boxes_depth(*high, z, NU)
+        whole = box_arrays.boxes_depth(*span, z, NU)
+        parts = box_arrays.boxes_depth(*low, z, NU) + box_arrays.boxes_depth(*high, z, NU)
         np.testing.assert_allclose(parts, whole, atol=1e-12 * (1 + np.abs(span).max()))
 
 
@@ -243,16 +244,16 @@ def test_mirror_symmetry(x, y, top, length, width, thickness):
     span = (x, x + length, y, y + width, top, top + thickness)
     mirrored = (-x - length, -x, y, y + width, top, top + thickness)
     turned = (y, y + width, x, x + length, top, top + thickness)
-    here = box.boxes_surface(*span, NU)
+    here = box_arrays.boxes_surface(*span, NU)
     scale = np.abs(here).max()
     np.testing.assert_allclose(
-        box.boxes_surface(*mirrored, NU), here * [-1, 1, 1, -1, 1, 1], atol=1e-13 * scale
+        box_arrays.boxes_surface(*mirrored, NU), here * [-1, 1, 1, -1, 1, 1], atol=1e-13 * scale
     )
     np.testing.assert_allclose(
-        box.boxes_surface(*turned, NU), here[[1, 0, 2, 4, 3, 5]], atol=1e-13 * scale
+        box_arrays.boxes_surface(*turned, NU), here[[1, 0, 2, 4, 3, 5]], atol=1e-13 * scale
     )
-    strain = box.boxes_surface_gradient(*span, NU)
-    swapped = box.boxes_surface_gradient(*turned, NU)
+    strain = box_arrays.boxes_surface_gradient(*span, NU)
+    swapped = box_arrays.boxes_surface_gradient(*turned, NU)
     np.testing.assert_allclose(
         swapped, strain[[1, 0, 2, 4, 3, 6, 5, 7, 9, 8]], atol=1e-12 * np.abs(strain).max()
     )
@@ -284,7 +285,7 @@ def test_attraction_is_harmonic_outside_and_poisson_inside():
     ],
 )
 def test_bad_input(span, words):
-    for function in (box.boxes_surface, box.boxes_surface_gradient):
+    for function in (box_arrays.boxes_surface, box_arrays.boxes_surface_gradient):
         with pytest.raises(InputError) as error:
             function(*span, NU)
         for word in words:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from subside.earth import box, polyhedron
+from subside.earth import polyhedron
 from subside.earth.box_formulas import attraction
 
 NU = 0.3
@@ -54,11 +54,6 @@ def test_the_order_of_corners_does_not_matter(order, cell):
         np.testing.assert_allclose(
             polyhedron.hexahedron_attraction(cell[order], p),
             polyhedron.hexahedron_attraction(cell, p),
-            atol=1e-13,
-        )
-        np.testing.assert_allclose(
-            polyhedron.contraction_hexahedron_depth(cell[order], p, NU, 3),
-            polyhedron.contraction_hexahedron_depth(cell, p, NU, 3),
             atol=1e-13,
         )
 
@@ -137,15 +132,6 @@ def test_pinched_cell():
     assert np.abs(polyhedron.hexahedron_attraction(flat, p)).max() < 1e-15
 
 
-@pytest.mark.parametrize("place", PLACES)
-def test_contraction_of_a_box(place):
-    """Exact direct term; image terms by 16 Gauss points per direction."""
-    p = np.array(place)
-    got = polyhedron.contraction_hexahedron_depth(CELL, p, NU, 16)
-    expected = box.box_depth(*from_point(SPAN, (p[0], p[1], 0.0)), p[2], NU)
-    np.testing.assert_allclose(got, expected, atol=1e-11)
-
-
 def test_far_accuracy():
     """The sum over faces loses (distance/size)^2 roundings: 5e-10 at 1000 half-sizes."""
     for distance, limit in ((10, 5e-13), (100, 2e-11), (1000, 3e-9)):
@@ -155,8 +141,3 @@ def test_far_accuracy():
         d = place - p
         pull = (weight[..., None] * d / np.linalg.norm(d, axis=-1)[..., None] ** 3).sum((0, 1, 2))
         np.testing.assert_allclose(got, pull * np.sign(weight.sum()), rtol=limit)
-
-
-def test_order_out_of_range():
-    with pytest.raises(ValueError, match="1 to 16"):
-        polyhedron.contraction_hexahedron_depth(CELL, np.zeros(3), NU, 17)

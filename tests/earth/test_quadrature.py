@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import box_arrays
 import numpy as np
 import pytest
 
-from subside.earth import box, half_space, rigid_basement
+from subside.earth import half_space, rigid_basement
 from subside.earth.quadrature import gauss_order
 from subside.errors import InputError
 
@@ -47,7 +48,8 @@ def test_rule_keeps_its_promise(ratio, shape, quantity):
         np.r_[0, np.linspace(0.2, 1.3, 6) * half[0], half[0] + 1, half[0] + 3],
         np.r_[0, np.linspace(0.2, 1.3, 6) * half[1], half[1] + 1],
     ))
-    exact_function = box.boxes_surface if quantity == "displacement" else box.boxes_surface_gradient
+    exact_function = (box_arrays.boxes_surface if quantity == "displacement"
+                      else box_arrays.boxes_surface_gradient)
     exact = exact_function(
         -half[0] - x, half[0] - x, -half[1] - y, half[1] - y, top, top + thickness, 0.25
     )
@@ -71,7 +73,7 @@ def test_rule_does_not_waste(ratio, tolerance):
     fewer = int(np.floor(0.6 * n))
     x = np.linspace(0, 1.2 * ratio, 40)
     half = (ratio, 1e-3)
-    exact = box.boxes_surface(-ratio - x, ratio - x, -1e-3, 1e-3, 1.0, 1.0002, 0.25)[3:]
+    exact = box_arrays.boxes_surface(-ratio - x, ratio - x, -1e-3, 1e-3, 1.0, 1.0002, 0.25)[3:]
     got = gauss_sum(half, 1.0, 2e-4, (fewer, 1, 1), False, x, 0.0 * x)[3:]
     assert np.abs(got - exact).max() / np.abs(exact).max() > tolerance
 
