@@ -6,6 +6,9 @@
 
 from __future__ import annotations
 
+import os
+import sys
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -22,6 +25,18 @@ _HOME = {
     "read_result": "subside.export.netcdf",
     "run": "subside.pipeline",
 }
+
+
+def _cache_folder() -> str:
+    """Where compiled code is kept: not inside the installed package, whence pip cannot take it."""
+    if sys.platform == "win32":
+        base = Path(os.environ.get("LOCALAPPDATA", Path.home()))
+    else:
+        base = Path(os.environ.get("XDG_CACHE_HOME", Path.home() / ".cache"))
+    return str(base / "subside" / "compiled")
+
+
+os.environ.setdefault("NUMBA_CACHE_DIR", _cache_folder())
 
 
 def __getattr__(name: str) -> Any:

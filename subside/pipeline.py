@@ -24,7 +24,7 @@ from subside.grid.geometry import corners_of_boxes
 from subside.grid.summary import cut_off_text, edge_depletion
 from subside.hooks.contracts import EarthModel
 from subside.hooks.registry import registry
-from subside.observe.map import MapGrid, plan_map, round_spacing
+from subside.observe.map import MapGrid, plan_map, refuse_size, round_spacing
 from subside.observe.points import Points, read_points
 from subside.observe.request import Request, read_request
 from subside.progress import Progress
@@ -66,8 +66,12 @@ class Job:
     def expected_pixels(self) -> int:
         """Size of the map: exact where bounds are given, else from the usual reach of a bowl."""
         table = self.scenario.map
-        centres = self.cells["centroid"].values
-        low, high = centres.min(axis=0), centres.max(axis=0)
+        low, high = np.full(3, np.inf), np.full(3, -np.inf)
+        for start in range(0, self.bodies.count, 100_000):
+            corners = self.bodies.corners(
+                np.arange(start, min(start + 100_000, self.bodies.count)))
+            low = np.minimum(low, corners.min(axis=(0, 1)))
+            high = np.maximum(high, corners.max(axis=(0, 1)))
         unit = float(self.cells.attrs["xy_unit_in_m"])
         if table is None or table.bounds is None:
             # a point source falls to 1 % of its peak at 4.5 depths
@@ -76,7 +80,9 @@ class Job:
                                         high[1] + reach)
             step = table.spacing if table and table.spacing else round_spacing(
                 float(self.depth.min()), max(east - west, north - south))
-            return int((east - west) / step) * int((north - south) / step)
+            columns, rows = int((east - west) / step), int((north - south) / step)
+            refuse_size(columns, rows, step)
+            return columns * rows
         grid = plan_map(table, low[:2], high[:2], float(self.depth.min()), unit,
                         lambda targets: np.zeros(targets.x.size))
         return grid.x.size * grid.y.size

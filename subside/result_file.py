@@ -19,7 +19,12 @@ class ResultFile:
     """The result file of a run and its relation to the scenario."""
 
     def __init__(self, path: Path, scenario: Scenario) -> None:
-        self.path = path.resolve()
+        try:
+            self.path = path.resolve()
+            self.path.exists()
+        except (OSError, RuntimeError, ValueError) as error:
+            raise InputError(f"output '{str(path)[:200]}' cannot be a file: {error}. Name another "
+                             "one with -o.") from None
         self._scenario = scenario
 
     @property
@@ -44,6 +49,9 @@ class ResultFile:
         if self.path.is_dir():
             raise InputError(f"output '{self.path}' is a folder; name a file, for example "
                              f"'{self.path / 'result.nc'}'.")
+        if self.path.exists() and not self.path.is_file():
+            raise InputError(f"output '{self.path}' is a device or the like, not a file; nothing "
+                             "was written. Name a file with -o.")
         folder = next(p for p in self.path.parents if p.exists())
         if not folder.is_dir() or not os.access(folder, os.W_OK | os.X_OK):
             reason = "may not be written" if folder.is_dir() else "is a file, not a folder"

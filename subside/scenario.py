@@ -7,6 +7,7 @@ know, naming the key, the value and the nearest known word.
 from __future__ import annotations
 
 import datetime as dt
+import difflib
 import hashlib
 import tomllib
 from collections.abc import Mapping
@@ -192,7 +193,13 @@ class Scenario(_File):
 
     def resolve(self, file: str) -> Path:
         """A path of the scenario, relative to the scenario file."""
-        return (self.path.parent / file).resolve()
+        try:
+            path = (self.path.parent / file).resolve()
+            path.exists()
+        except (OSError, RuntimeError, ValueError) as error:
+            raise InputError(f"scenario '{self.path}': '{file[:200]}' cannot be a file: {error}."
+                             ) from None
+        return path
 
 
 def load_scenario(path: str | Path) -> Scenario:
@@ -212,7 +219,7 @@ def load_scenario(path: str | Path) -> Scenario:
     path = Path(path)
     try:
         raw = path.read_bytes()
-        text = raw.decode("utf-8")
+        text = raw.decode("utf-8-sig")
         data = tomllib.loads(text)
     except FileNotFoundError:
         raise InputError(f"scenario '{path}' does not exist; `subside init DIR` writes one to "
@@ -306,6 +313,7 @@ def parameter_value(
         if "central" not in raw:
             raise InputError(f"{key}: a distribution needs the key 'central', the value that "
                              "`run` uses.")
+        _check_distribution(raw, key)
         return parameter_value(raw["central"], parameter, where, regions)
     if not parameter.varies:
         raise InputError(f"{key} must be one quantity, it may not vary from cell to cell.")
@@ -328,3 +336,23 @@ def parameter_value(
                          "give a quantity, { field = ... } or { by_region = ... }.")
     raise InputError(f"{key} = {raw!r} is none of: a quantity such as \"{parameter.example}\", "
                      "{ field = NAME }, { by_region = { NAME = QUANTITY } }.")
+
+
+def _check_distribution(raw: dict[str, Any], key: str) -> None:
+    """Refuse a distribution that scipy.stats does not know, and keys it does not take."""
+    from scipy import stats
+
+    name = str(raw["distribution"])
+    known = [n for n in dir(stats) if isinstance(getattr(stats, n), stats.rv_continuous)]
+    if name not in known:
+        close = difflib.get_close_matches(name, known, n=1)
+        hint = f" Did you mean '{close[0]}'?" if close else ""
+        raise InputError(f"{key}: distribution = '{name}' is not a continuous distribution of "
+                         f"scipy.stats, such as 'norm', 'lognorm', 'uniform'.{hint}")
+    shapes = getattr(stats, name).shapes
+    allowed = {"distribution", "central", "loc", "scale",
+               *(shapes.replace(" ", "").split(",") if shapes else ())}
+    for word in raw:
+        if word not in allowed:
+            raise InputError(f"{key}: distribution '{name}' has no key '{word}'."
+                             + nearest(word, allowed))

@@ -29,6 +29,8 @@ class Column:
     unit : str or None
         SI unit of a column of numbers; None for text.
     required : bool
+    refused : tuple of str
+        Units that are mixed up with another one in this place.
     plain_unit : str or None
         Unit of a heading without brackets; None: such a heading is an error.
     """
@@ -37,6 +39,7 @@ class Column:
     unit: str | None
     required: bool = True
     plain_unit: str | None = None
+    refused: tuple[str, ...] = ()
 
 
 def read_table(path: Path, columns: Sequence[Column], what: str) -> dict[str, np.ndarray]:
@@ -125,6 +128,10 @@ def _heading(cell: str, known: dict[str, Column], path: Path, what: str) -> tupl
     if unit is None:
         raise InputError(f"{what} file '{path}': column '{name}' has no unit; write it in "
                          f"brackets, for example '{name} [{column.unit}]'.")
+    if unit in column.refused:
+        raise InputError(f"{what} file '{path}', column '{name}': '{unit}' is not the foot of the "
+                         "grid's CRS, which would shift the points by metres; write the CRS's own "
+                         "unit, 'ft' or 'US_survey_foot', or 'm'.")
     try:
         return name, scale_to_si(unit, column.unit)
     except InputError as error:

@@ -6,6 +6,7 @@ answers at once.
 
 from __future__ import annotations
 
+import signal
 import sys
 import traceback
 from collections.abc import Callable
@@ -62,6 +63,8 @@ def main(arguments: list[str] | None = None) -> None:
     """Run the command line and exit with its code."""
     arguments = sys.argv[1:] if arguments is None else arguments
     debug = "--debug" in arguments
+    # a polite kill ends like Ctrl-C: unfinished files are taken away
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     sys.exit(_guarded(lambda: cli.main(arguments, prog_name="subside", standalone_mode=False),
                       debug))
 

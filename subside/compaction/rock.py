@@ -107,9 +107,12 @@ class Block:
             if values.ndim > 1:
                 raise InputError(f"{self.where} {parameter.name}: the field '{value.name}' changes "
                                  "with time; a rock parameter must not.")
-            if values.size:
-                parameter.check(float(values.min()), float(values.max()),
-                                f"{self.where} (field '{value.name}')")
+            for at in (int(values.argmin()), int(values.argmax())) if values.size else ():
+                try:
+                    parameter.check(float(values[at]), float(values[at]),
+                                    f"{self.where} (field '{value.name}')")
+                except InputError as error:
+                    raise InputError(str(error), cell=int(self.cells[at])) from None
             return values
         return self._by_region(parameter, value)
 

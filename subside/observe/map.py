@@ -12,7 +12,7 @@ from subside.api import InputError
 from subside.scenario import MapTable
 from subside.superposition.interface import Targets
 
-__all__ = ["MapGrid", "plan_map", "round_spacing"]
+__all__ = ["MapGrid", "plan_map", "refuse_size", "round_spacing"]
 
 _REACH_SHARE = 0.01
 """An automatic map reaches to this share of the peak."""
@@ -102,11 +102,16 @@ def _grid(west: float, north: float, step: float, columns: int, rows: int) -> Ma
     if min(columns, rows) < 2:
         raise InputError(f"[map]: it has {rows} x {columns} pixels; at least 2 x 2 are needed for "
                          "a map that a GIS can place; give a smaller spacing or wider bounds.")
+    refuse_size(columns, rows, step)
+    return MapGrid(west + (np.arange(columns) + 0.5) * step,
+                   north - (np.arange(rows) + 0.5) * step, step)
+
+
+def refuse_size(columns: int, rows: int, step: float) -> None:
+    """Raise `InputError` for a map no GIS would thank for."""
     if max(columns, rows) > _LARGEST:
         raise InputError(f"[map]: it has {rows} x {columns} pixels; more than {_LARGEST} on a side "
                          f"is refused; give a larger spacing than {step:g} m.")
-    return MapGrid(west + (np.arange(columns) + 0.5) * step,
-                   north - (np.arange(rows) + 0.5) * step, step)
 
 
 def round_spacing(depth: float, extent: float) -> float:

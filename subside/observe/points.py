@@ -14,6 +14,9 @@ from subside.tables import Column, read_table
 
 __all__ = ["Points", "read_points"]
 
+_FOREIGN_FEET = {0.3048: ("US_survey_foot", "usft", "ftUS"), 0.304800610: ("ft", "foot", "feet")}
+"""Feet that are not those of a CRS, by the length of its own unit in m."""
+
 
 @dataclass(frozen=True)
 class Points:
@@ -48,8 +51,9 @@ def read_points(paths: Sequence[Path], surface: float, crs_unit_in_m: float) -> 
         From the table, or for a point above the surface or a name used twice.
     """
     plain = "m" if crs_unit_in_m == 1.0 else None
-    columns = [Column("name", None), Column("x", "m", plain_unit=plain),
-               Column("y", "m", plain_unit=plain),
+    foreign = _FOREIGN_FEET.get(round(crs_unit_in_m, 9), ())
+    columns = [Column("name", None), Column("x", "m", plain_unit=plain, refused=foreign),
+               Column("y", "m", plain_unit=plain, refused=foreign),
                Column("depth", "m", required=False, plain_unit="m")]
     parts = []
     for path in paths:

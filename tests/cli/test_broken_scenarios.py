@@ -111,6 +111,11 @@ BROKEN: dict[str, tuple[Change, list[str]]] = {
     "poisson by field": (key("0.25", '{ field = "cm" }'),
                          ["poisson_ratio must be one quantity"]),
     "unknown form": (cm('{ fild = "cm" }'), ["is none of: a quantity", "{ field = NAME }"]),
+    "an unknown distribution": (cm('{ distribution = "lognrom", central = "1e-5 1/bar" }'),
+                                ["'lognrom'", "scipy.stats", "Did you mean 'lognorm'?"]),
+    "an unknown key of a distribution": (
+        cm('{ distribution = "lognorm", s = 0.3, typo = 3, central = "1e-5 1/bar" }'),
+        ["'lognorm' has no key 'typo'", "scale"]),
     "no central value": (cm('{ distribution = "lognorm", s = 0.3 }'),
                          ["needs the key 'central'"]),
     "form of a later version": (cm('{ correlation = "newman", of = "porosity" }'),

@@ -80,6 +80,7 @@ def test_jump_across_the_disc_is_its_closure(tmp_path: Path) -> None:
     """Roof minus floor of a uniform closing sheet moves by exactly e h (definition)."""
     result = _disc(tmp_path, [37.0, 37.0], depth=[C - 0.5, C + 0.5])
     roof, floor = _down(result)
+    # half a metre off either face: 1 m of the axis profile's slope .38 e h/R lies between them
     assert roof - floor == pytest.approx(1.0, abs=2e-3)
 
 
