@@ -114,8 +114,9 @@ def _print(fact: dict[str, Any]) -> None:
             value = fact[key]
             click.echo(f"  {label}: {', '.join(value) if isinstance(value, list) else value}")
     for p in fact["parameters"]:
+        unit = f" {p['unit']}" if p["unit"] != "1" else ""
         need = "required" if p["required"] else (
-            f"default {p['default']:g}" + (f" {p['unit']}" if p["unit"] != "1" else "") if p["default"] is not None else "optional")
+            f"default {p['default']:g}{unit}" if p["default"] is not None else "optional")
         click.echo(f"  {p['name']}  [{p['unit']}]  {need}; {p['bounds']}")
         click.echo(f"      {p['meaning']}")
         if p["example"]:
