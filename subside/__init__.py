@@ -29,10 +29,8 @@ _HOME = {
 
 def _cache_folder() -> str:
     """Where compiled code is kept: not inside the installed package, whence pip cannot take it."""
-    if sys.platform == "win32":
-        base = Path(os.environ.get("LOCALAPPDATA", Path.home()))
-    else:
-        base = Path(os.environ.get("XDG_CACHE_HOME", Path.home() / ".cache"))
+    word = "LOCALAPPDATA" if sys.platform == "win32" else "XDG_CACHE_HOME"
+    base = Path(os.environ.get(word) or os.path.expanduser("~/.cache"))
     return str(base / "subside" / "compiled")
 
 
