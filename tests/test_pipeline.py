@@ -186,3 +186,9 @@ def test_extremes_are_sought_on_the_map_and_at_points(tmp_path: Path) -> None:
     assert float(result["max_subsidence_x"][-1]) == X0
     assert float(result["max_subsidence_y"][-1]) == Y0
     assert float(result["bowl_volume_map"][-1]) < 0.05 * float(result["bowl_volume"][-1])
+
+
+@pytest.mark.parametrize(("spacing", "said"), [("3 km", True), ("500 m", False)])
+def test_a_map_too_coarse_for_its_field_is_said(tmp_path: Path, spacing: str, said: bool) -> None:
+    warnings = run(tmp_path, more=f'[map]\nspacing = "{spacing}"\n').attrs["warnings"]
+    assert ("wider than the depth" in warnings) == said
