@@ -196,11 +196,12 @@ def run(
     with located(f"scenario '{scenario.path}'"):
         compaction = _compact(job, progress)
         grid = _map(job, compaction) if job.wants_map else None
-        if grid is not None and grid.spacing > float(job.depth.min()):
+        shallowest = float(job.depth.min())
+        if grid is not None and grid.spacing > shallowest:
             job.warnings.append(
-                f"the map's spacing of {grid.spacing:g} m is wider than the depth of the shallowest "
-                f"cell ({float(job.depth.min()):.0f} m): the deepest place may lie between pixels; "
-                "give a smaller [map] spacing.")
+                f"the map's spacing of {grid.spacing:g} m is wider than the shallowest cell is "
+                f"deep ({shallowest:.0f} m): the deepest place may lie between pixels; give a "
+                "smaller [map] spacing.")
         fields, region_fields, record = _superpose(job, compaction, grid, progress)
     result = assemble(Parts(
         scenario=job.scenario, timeline=job.timeline, blocks=job.blocks, earth=job.earth,

@@ -191,4 +191,4 @@ def test_extremes_are_sought_on_the_map_and_at_points(tmp_path: Path) -> None:
 @pytest.mark.parametrize(("spacing", "said"), [("3 km", True), ("500 m", False)])
 def test_a_map_too_coarse_for_its_field_is_said(tmp_path: Path, spacing: str, said: bool) -> None:
     warnings = run(tmp_path, more=f'[map]\nspacing = "{spacing}"\n').attrs["warnings"]
-    assert ("wider than the depth" in warnings) == said
+    assert ("wider than the shallowest cell" in warnings) == said
