@@ -69,7 +69,7 @@ def print_summary(result: xr.Dataset, files: Sequence[Path]) -> None:
     rows.append((f"bowl volume {last}", f"{_volume(facts['bowl_volume_m3'])} in all"
                  + (f", {_volume(facts['bowl_volume_map_m3'])} on the map"
                     if "bowl_volume_map_m3" in facts else "")))
-    rows += [(f"lost by {name}", _volume(value))
+    rows += [(f"volume lost by {name}", _volume(value))
              for name, value in facts["region_compaction_volume_m3"].items()]
     rows.append(("depletion at edge", f"{100 * facts['edge_depletion']:.1f} % of the largest"))
     if "map_pixels" in facts:
