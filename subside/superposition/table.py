@@ -25,7 +25,7 @@ _RADII = (400, 800, 1600)
 
 @dataclass(frozen=True)
 class RadialTable:
-    """Cubic pieces of a kernel; see `tiles.fill_table` for their order.
+    """Cubic pieces of a kernel; see `tiles._fill_table` for their order.
 
     Attributes
     ----------
