@@ -1,101 +1,50 @@
 """The main job: read, compact, superpose, observe, write. Reading the code starts here.
 
-`prepare` checks everything without computing; `run` does the job.
+`prepare` checks everything without computing; `run` does the job, some dates (a leg) and some cells
+(a batch) at a time: see `work` for what happens to a batch.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Callable, Sequence
 from functools import partial
 from pathlib import Path
 
 import numpy as np
 import xarray as xr
 
-from subside.assemble import Parts, assemble
-from subside.compaction.apply import Compaction, compact
-from subside.compaction.rock import Block, assign_blocks, place
+from subside.assemble import Gathered, add_numbers, describe, frame_of, record_of
+from subside.bodies import bodies_of, inside_valid_depths
+from subside.checksums import Checksums
+from subside.compaction.apply import Compactor
+from subside.compaction.fields import place
+from subside.compaction.rock import assign_blocks
 from subside.earth_setup import make_earth
 from subside.errors import InputError, located
 from subside.export.grid_mapping import axis_unit, grid_mapping, projected_crs
-from subside.grid import open_grid
-from subside.grid.geometry import corners_of_boxes
-from subside.grid.summary import cut_off_text, edge_depletion
+from subside.grid import open_cells
+from subside.heap import give_back_freed_memory, keep_freed_memory
 from subside.hooks.contracts import EarthModel
 from subside.hooks.registry import registry
-from subside.observe.map import MapGrid, plan_map, refuse_size, round_spacing
+from subside.job import Job
+from subside.maps import HeldMaps, MapMaker, computed, held_names, is_local, map_names
 from subside.observe.points import Points, read_points
-from subside.observe.request import Request, read_request
+from subside.observe.request import read_request
+from subside.outlook import Outlook, expected_map, look_ahead
 from subside.progress import Progress
-from subside.result_file import ResultFile
+from subside.result_file import ResultFile, Sink
 from subside.scenario import Scenario, load_scenario
-from subside.superposition.interface import Bodies, Fields, SolverRecord, Targets
-from subside.superposition.plan import Plan, make_plan
+from subside.superposition.plan import refuse_method
+from subside.superposition.summation import ATTEMPTS, one_blas_thread
 from subside.survey.overlay import read_survey
-from subside.timeline import Timeline, make_timeline
+from subside.timeline import make_timeline
 
 __all__ = ["Job", "prepare", "run"]
 
 
-@dataclass
-class Job:
-    """A scenario made ready: everything read and checked, nothing computed."""
-
-    scenario: Scenario
-    timeline: Timeline
-    blocks: list[Block]
-    earth: EarthModel
-    bodies: Bodies
-    depth: np.ndarray
-    points: Points
-    request: Request
-    edge_depletion: float
-    warnings: list[str]
-
-    @property
-    def cells(self) -> xr.Dataset:
-        """The cell dataset on the run's pressure dates."""
-        return self.timeline.cells
-
-    @property
-    def wants_map(self) -> bool:
-        """A scenario without points gets a map."""
-        return self.scenario.map is not None or not self.points.x.size
-
-    def expected_pixels(self) -> int:
-        """Size of the map: exact where bounds are given, else from the usual reach of a bowl."""
-        table = self.scenario.map
-        low, high = np.full(3, np.inf), np.full(3, -np.inf)
-        for start in range(0, self.bodies.count, 100_000):
-            corners = self.bodies.corners(
-                np.arange(start, min(start + 100_000, self.bodies.count)))
-            low = np.minimum(low, corners.min(axis=(0, 1)))
-            high = np.maximum(high, corners.max(axis=(0, 1)))
-        unit = float(self.cells.attrs["xy_unit_in_m"])
-        if table is None or table.bounds is None:
-            # a point source falls to 1 % of its peak at 4.5 depths
-            reach = 4.5 * float(self.depth.max())
-            west, south, east, north = (low[0] - reach, low[1] - reach, high[0] + reach,
-                                        high[1] + reach)
-            step = table.spacing if table and table.spacing else round_spacing(
-                float(self.depth.min()), max(east - west, north - south))
-            columns, rows = int((east - west) / step), int((north - south) / step)
-            refuse_size(columns, rows, step)
-            return columns * rows
-        grid = plan_map(table, low[:2], high[:2], float(self.depth.min()), unit,
-                        lambda targets: np.zeros(targets.x.size))
-        return grid.x.size * grid.y.size
-
-    def plan(self, targets: int, sources: int = 1) -> Plan:
-        """Method and expected work for a number of targets."""
-        return make_plan(self.scenario.solver.method, self.bodies.count, targets,
-                         self.timeline.dates.size, 8 if self.request.gradient else 3, sources)
-
-
 def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
             progress: Progress | None = None) -> Job:
-    """Read and check a scenario and all it names.
+    """Read and check a scenario and all it names, but for the pressures after the first date.
 
     Raises
     ------
@@ -113,13 +62,16 @@ def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
         laws = {table.law: registry.get("law", table.law, "[compaction] law")
                 for table in scenario.compaction}
         request = read_request(scenario.output.quantities)
-        make_plan(scenario.solver.method, 0, 0, 0, 3, 1)
-    grid = scenario.grid[0]
-    with progress.stage("reading", 1, "file") as advance:
-        cells = open_grid(scenario.resolve(grid.file), crs=grid.crs, accept=grid.accept,
-                          surface=scenario.earth.surface, initial_pressure=grid.initial_pressure)
-        advance(1)
-    depth = cells["centroid"].values[:, 2] - scenario.earth.surface
+        refuse_method(scenario.solver.method)
+    grid, files = scenario.grid[0], scenario.grid_files()
+    with progress.stage("reading", len(files), "file") as advance:
+        cells, streams = open_cells(
+            list(files.values()), crs=grid.crs, accept=grid.accept,
+            surface=scenario.earth.surface, initial_pressure=grid.initial_pressure)
+        advance(len(files))
+    depth = cells["centroid"].values[:, 2]
+    if scenario.earth.surface != 0.0:  # else the same numbers, which need not be kept twice
+        depth = depth - scenario.earth.surface
     points = read_points([scenario.resolve(p.file) for p in scenario.points],
                          scenario.earth.surface, cells.attrs["xy_unit_in_m"])
     if scenario.survey is not None:
@@ -129,26 +81,25 @@ def prepare(scenario: str | Path | Scenario, plugins: Sequence[str | Path] = (),
         timeline = make_timeline(cells, scenario.time.start,
                                  cells["initial_pressure"].values if given else None,
                                  scenario.output.times)
-        bodies = _bodies(timeline.cells, scenario.earth.surface)
-        _inside_valid_depths(bodies, earth, timeline.cells)
+        bodies = bodies_of(cells, scenario.earth.surface)
+        inside_valid_depths(bodies, earth, cells)
         _can_be_observed(points, earth, float(depth.max()))
-        blocks = assign_blocks(scenario.compaction, laws, timeline.cells)
+        attributes = {name: stream.attrs for name, stream in streams.items() if name != "pressure"}
+        blocks = assign_blocks(scenario.compaction, laws, cells, attributes)
         if any(table.horizontal_release == "own" for table in scenario.compaction):
             earth.modulus_at(depth[:1])
-        edge = edge_depletion(timeline.cells, timeline.cells["pressure"].values[0])
         job = Job(
-            scenario=scenario, timeline=timeline, blocks=blocks, earth=earth, bodies=bodies,
-            depth=depth, points=points, request=request, edge_depletion=edge,
-            warnings=[*cells.attrs["warnings"], *timeline.warnings,
-                      *filter(None, [cut_off_text(edge)])],
-        )
-        _can_be_written(str(cells.attrs["crs_wkt"]), f"grid '{grid.file}'")
+            scenario=scenario, timeline=timeline, cells=cells, streams=streams, blocks=blocks,
+            compactor=Compactor(cells, timeline.axis, blocks, earth, depth, attributes),
+            earth=earth, bodies=bodies, depth=depth, points=points, request=request,
+            warnings=[*cells.attrs["warnings"], *timeline.warnings])
+        _can_be_written(str(cells.attrs["crs_wkt"]), f"grid '{next(iter(files))}'")
         if not job.wants_map and request.maps:
             raise InputError(f"[output] quantities: '{request.maps[0]}' is a map, and this "
                              "scenario makes none because it names points; add [map], or leave "
                              "it out.")
         if job.wants_map:
-            job.expected_pixels()  # refuses bounds that make no map
+            expected_map(job)  # refuses bounds that make no map
     return job
 
 
@@ -159,6 +110,9 @@ def run(
     overwrite: bool = False,
     plugins: Sequence[str | Path] = (),
     progress: Progress | None = None,
+    memory: float | None = None,
+    workers: int | None = None,
+    cluster: str | None = None,
 ) -> xr.Dataset:
     """The main job: from a scenario to a result.
 
@@ -173,19 +127,28 @@ def run(
         Plug-in files to load on purpose.
     progress : Progress, optional
         Told about the stages.
+    memory : float, optional
+        Bytes the program may use in all; a share of what the machine has free when left out.
+    workers : int, optional
+        Threads, or workers of a ``"local"`` cluster; one for each core when left out.
+    cluster : str, optional
+        Address of a Dask scheduler, or ``"local"`` for one on this machine; threads of this process
+        when left out.
 
     Returns
     -------
     Dataset
-        Variables of `subside.names.RESULT_VARIABLES`, SI.
+        Variables of `subside.names.RESULT_VARIABLES`, SI. Of a result that was written, maps are
+        read from the file when they are asked for.
 
     Raises
     ------
     InputError
         For the first thing wrong in the input.
     CannotDo
-        Disk or memory.
+        Disk, memory, or workers.
     """
+    keep_freed_memory()
     progress = progress or Progress()
     if not isinstance(scenario, Scenario):
         scenario = load_scenario(scenario)
@@ -193,106 +156,134 @@ def run(
     if target is not None:
         target.refuse(overwrite)
     job = prepare(scenario, plugins, progress)
-    with located(f"scenario '{scenario.path}'"):
-        compaction = _compact(job, progress)
-        grid = _map(job, compaction) if job.wants_map else None
-        shallowest = float(job.depth.min())
-        if grid is not None and grid.spacing > shallowest:
-            job.warnings.append(
-                f"the map's spacing of {grid.spacing:g} m is wider than the shallowest cell is "
-                f"deep ({shallowest:.0f} m): the deepest place may lie between pixels; give a "
-                "smaller [map] spacing.")
-        fields, region_fields, record = _superpose(job, compaction, grid, progress)
-    result = assemble(Parts(
-        scenario=job.scenario, timeline=job.timeline, blocks=job.blocks, earth=job.earth,
-        bodies=job.bodies, depth=job.depth, points=job.points, request=job.request, grid=grid,
-        compaction=compaction, fields=fields, region_fields=region_fields,
-        solver=record,
-        edge_depletion=job.edge_depletion, warnings=[*job.warnings, *compaction.warnings],
-    ))
-    if target is not None:
-        with progress.stage("writing", 1, "file") as advance:
-            target.write(result)
-            advance(1)
-    return result
+    files = scenario.grid_files() | {p.file: scenario.resolve(p.file) for p in scenario.points}
+    with (Checksums(files.values()) as checksums, one_blas_thread(),
+          located(job.where, partial(place, job.cells))):
+        return _Run(job, target, memory, workers, cluster, progress,
+                    lambda: {name: checksums.of(file) for name, file in files.items()}).result()
 
 
-def _compact(job: Job, progress: Progress) -> Compaction:
-    with progress.stage("compaction", job.bodies.count, "cells") as advance:
-        return compact(job.cells, job.cells["pressure"].values, job.timeline.axis, job.blocks,
-                       job.earth, job.depth, advance)
+class _Run:
+    """One run from a job made ready to its result."""
 
+    def __init__(self, job: Job, target: ResultFile | None, memory: float | None,
+                 workers: int | None, cluster: str | None, progress: Progress,
+                 checksums: Callable[[], dict[str, str]]) -> None:
+        self._job, self._target, self._memory = job, target, memory
+        self._workers, self._cluster, self._progress = workers, cluster, progress
+        self._checksums = checksums
+        self._notes: list[str] = []
 
-def _superpose(job: Job, compaction: Compaction, grid: MapGrid | None,
-               progress: Progress) -> tuple[Fields, list[Fields], SolverRecord]:
-    """The field at map and points together, and by region on the map where asked for."""
-    moments = compaction.moments
-    at_map = grid.targets if grid is not None else None
-    at_points = job.points.targets
-    regions = job.cells.sizes["region"] if job.request.by_region and grid is not None else 0
-    size = at_map.x.size if at_map is not None else 0
-    pairs = float(job.bodies.count) * len(moments) * (size + at_points.x.size + regions * size)
-    record = SolverRecord()
-    region_fields = []
-    with progress.stage("superposition", job.bodies.count, "cells") as advance:
+    def result(self) -> xr.Dataset:
+        """Try the designs, each finer than the one before, until the check is content."""
+        job = self._job
+        if self._memory is not None:
+            give_back_freed_memory()
+        scouted = look_ahead(job, self._memory, self._workers, self._progress)
+        for attempt in range(len(ATTEMPTS)):
+            outlook = Outlook.of(job, scouted, attempt, self._memory, self._workers,
+                                 in_memory=self._target is None)
+            result = self._attempt(outlook)
+            if result is not None:
+                return result
+        raise AssertionError("the plain sum is always accepted")
 
-        def advance_pairs(done: float) -> None:
-            advance(done / pairs * job.bodies.count)
+    def _attempt(self, outlook: Outlook) -> xr.Dataset | None:
+        """The result, or None if its error was too large."""
+        job, grid = self._job, outlook.grid
+        frame = frame_of(job, grid)
+        gathered, held = Gathered(), HeldMaps()
+        names = map_names(job.request) if grid is not None else []
+        with Sink(self._target, frame, names) as sink:
+            maker = None
+            if grid is not None:
+                maker = MapMaker(frame, job.request, grid, outlook.outlines, job.unit, sink, held)
+            self._legs(outlook, gathered, maker, sink)
+            summations = outlook.work.summations.values()
+            errors = [summation.error() for summation in summations]
+            self._notes += [note for summation in summations for note in summation.notes
+                            if note not in self._notes]
+            for summation, error in zip(summations, errors, strict=True):
+                if not summation.accepts(error):
+                    self._notes.append(
+                        f"the check found an error of {error:.2g}, more than half the tolerance "
+                        f"of {job.scenario.solver.tolerance:g}: refined")
+                    return None
+            methods = sorted({summation.method for summation in summations})
+            warnings = [*job.warnings, *outlook.warnings]
+            frame.attrs |= record_of(job, self._checksums(), list(dict.fromkeys(warnings))) | {
+                "solver_method": ", ".join(methods),
+                "solver_tolerance": job.scenario.solver.tolerance,
+                "solver_error": max(errors, default=0.0),
+                "solver_notes": "; ".join(self._notes),
+                "edge_depletion": outlook.edge_depletion,
+            }
+            numbers = frame.drop_vars(names)
+            add_numbers(numbers, job, gathered, maker.numbers if maker else None)
+            self._whole_quantities(numbers, held, sink)
+            with self._progress.stage("writing", 1, "file") as advance:
+                result = sink.finish(numbers)
+                advance(1)
+            return result
 
-        def solve(moments: Mapping[str, np.ndarray], targets: Targets, gradient: bool) -> Fields:
-            solver = job.plan(targets.x.size, len(moments)).solver()
-            field = solver.solve(job.bodies, moments, targets, job.earth, gradient=gradient,
-                                 tolerance=job.scenario.solver.tolerance, progress=advance_pairs)
-            record.note(solver)
-            return field
+    def _legs(self, outlook: Outlook, gathered: Gathered, maker: MapMaker | None,
+              sink: Sink) -> None:
+        """All legs; what they give goes into `gathered` and to the maker of maps."""
+        job, work = self._job, outlook.work
+        total = float(job.bodies.count) * len(job.timeline.axis.pressure)
+        with self._progress.stage("superposition", total, "cell dates") as advance, \
+                outlook.workers(self._cluster) as crew:
+            for leg in outlook.legs:
 
-        fields: Fields = {}
-        if at_map is not None:
-            fields |= {f"map_{name}": values for name, values in solve(
-                moments, at_map, job.request.gradient).items()}
-        if at_points.x.size:
-            fields |= {f"point_{name}": values for name, values in solve(
-                moments, at_points, False).items()}
-        for region in range(regions):
-            chosen = job.cells["region"].values == region
-            part = {source: np.where(chosen, moment, 0.0) for source, moment in moments.items()}
-            assert at_map is not None
-            region_fields.append(solve(part, at_map, False))
-    return fields, region_fields, record
+                def ready(size: np.ndarray, steps: int = leg.steps) -> None:
+                    # the check wants a date at which the bowl is large
+                    keep = []
+                    if steps and size.max() >= outlook.largest:
+                        outlook.largest = float(size.max())
+                        keep = [int(size.argmax()) if size.any() else steps - 1]
+                    for summation in work.summations.values():
+                        summation.begin(steps, keep)
 
+                def done(cells: int, rows: int = leg.rows) -> None:
+                    advance(float(cells * rows))
 
-def _map(job: Job, compaction: Compaction) -> MapGrid:
-    """The map's pixels; an automatic extent asks for the field at a few places first."""
-    lost = compaction.volume_lost
-    live = np.nonzero(np.any(lost != 0.0, axis=0))[0]
-    if not live.size:
-        live = np.arange(job.bodies.count)
-    corners = job.bodies.corners(live)
-    # the date of the largest total and the last one: between them the bowl only grows or shrinks
-    total = np.abs(lost.sum(axis=1))
-    steps = np.unique([int(total.argmax()), lost.shape[0] - 1])
-    moments = {source: moment[steps] for source, moment in compaction.moments.items()}
+                tally = crew.leg(leg, ready, done)
+                outlook.watched(tally)
+                if not leg.steps:
+                    continue
+                gathered.lost_by_region.append(tally.lost_by_region)
+                gathered.bowl.append(tally.bowl)
+                if work.by_cell:
+                    gathered.cells.append(tally.cells)
+                again = sink.written()
+                fields = {name: summation.fields(tally.shares[name], again and name != "points")
+                          for name, summation in work.summations.items()}
+                if "points" in fields:
+                    gathered.points.append(fields["points"])
+                if maker is not None:
+                    by_region = [values["down"] for name, values in fields.items()
+                                 if name.startswith("region ")]
+                    maker.leg(leg.dates[0], fields["map"], by_region, tally.columns)
+            outlook.finish(job.compactor.warnings(crew.findings))
 
-    def subsidence_at(targets: Targets) -> np.ndarray:
-        solver = job.plan(targets.x.size, len(moments)).solver()
-        field = solver.solve(job.bodies, moments, targets, job.earth, tolerance=1e-2)
-        return np.asarray(np.abs(field["down"]).max(axis=0))
-
-    return plan_map(job.scenario.map, corners[..., :2].min(axis=(0, 1)),
-                    corners[..., :2].max(axis=(0, 1)), float(corners[..., 2].min()),
-                    float(job.cells.attrs["xy_unit_in_m"]), subsidence_at)
-
-
-def _bodies(cells: xr.Dataset, surface: float) -> Bodies:
-    """The cells in space, depth below the ground or seabed."""
-    if "corners" in cells:
-        corners = cells["corners"].values
-        shift = np.array([0.0, 0.0, surface])
-        return Bodies(corners.shape[0], lambda index: corners[index] - shift)
-    columns = [cells[n].values for n in ("x", "y", "top", "bottom", "dx", "dy", "azimuth")]
-    boxes = np.column_stack(columns)
-    boxes[:, 2:4] -= surface
-    return Bodies(boxes.shape[0], lambda index: corners_of_boxes(*boxes[index].T), boxes)
+    def _whole_quantities(self, numbers: xr.Dataset, held: HeldMaps, sink: Sink) -> None:
+        """Quantities that want all dates at once."""
+        request = self._job.request
+        wanted = [quantity for quantity in request.quantities if not is_local(quantity)]
+        if not wanted:
+            return
+        everything = numbers.copy()
+        for name in held_names(request):
+            if "x" in numbers.coords:
+                everything[name] = (("time", "y", "x"), held.whole(name))
+                describe(everything, name)
+        for quantity in wanted:
+            values = computed(quantity, everything)
+            if quantity.name in map_names(request):
+                sink.put(quantity.name, 0, values.transpose("time", "y", "x").values)
+            else:
+                numbers[quantity.name] = values
+                describe(numbers, quantity.name, quantity.unit, quantity.long_name)
 
 
 def _can_be_written(wkt: str, where: str) -> None:
@@ -313,19 +304,3 @@ def _can_be_observed(points: Points, earth: EarthModel, source_depth: float) -> 
                  "or seabed (leave its depth out to put it on the surface)"):
         earth.displacement("contraction", np.ones(1), points.depth[[deepest]],
                            np.full(1, source_depth))
-
-
-def _inside_valid_depths(bodies: Bodies, earth: EarthModel, cells: xr.Dataset) -> None:
-    shallowest, deepest = earth.valid_depths
-    for start in range(0, bodies.count, 100_000):
-        index = np.arange(start, min(start + 100_000, bodies.count))
-        depth = bodies.corners(index)[..., 2]
-        outside = (depth.max(axis=1) >= deepest) | (depth.min(axis=1) < shallowest)
-        if outside.any():
-            cell = int(np.argmax(outside))
-            raise InputError(
-                f"[earth] model = '{earth.name}' holds for sources between {shallowest:g} and "
-                f"{deepest:g} m below the ground or seabed; {place(cells, int(index[cell]))} "
-                f"reaches from {depth[cell].min():.6g} to {depth[cell].max():.6g} m. Put the "
-                "basement below the cells, or use another model."
-            )

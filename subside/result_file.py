@@ -4,15 +4,21 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable
+from contextlib import suppress
 from pathlib import Path
+from types import TracebackType
+from typing import Self
 
+import numpy as np
 import xarray as xr
 
 from subside.errors import CannotDo, InputError
-from subside.export.netcdf import scenario_file_of, write_result
+from subside.export.reader import open_result, scenario_file_of
+from subside.export.writer import ResultWriter
+from subside.maps import HeldMaps
 from subside.scenario import Scenario
 
-__all__ = ["ResultFile"]
+__all__ = ["ResultFile", "Sink"]
 
 
 class ResultFile:
@@ -71,12 +77,68 @@ class ResultFile:
 
     def _inputs(self) -> Iterable[Path]:
         scenario = self._scenario
-        files = [t.file for t in scenario.grid] + [t.file for t in scenario.points]
+        files = [t.file for t in scenario.points]
         if scenario.survey is not None:
             files.append(scenario.survey.file)
-        return (scenario.path.resolve(), *map(scenario.resolve, files))
+        return (scenario.path.resolve(), *scenario.grid_files().values(),
+                *map(scenario.resolve, files))
 
-    def write(self, result: xr.Dataset) -> None:
-        """Write the result whole or not at all."""
-        result.attrs["scenario_file"] = self.source
-        write_result(result, self.path)
+
+class Sink:
+    """Where a run's result goes: into its file map by map, or into memory.
+
+    Parameters
+    ----------
+    target : ResultFile or None
+        None: the result stays in memory.
+    frame : Dataset
+        Coordinates, and the maps to come as variables without values.
+    maps : list of str
+    """
+
+    def __init__(self, target: ResultFile | None, frame: xr.Dataset, maps: list[str]) -> None:
+        self._target, self._frame, self._names = target, frame, maps
+        self._held = HeldMaps()
+        self._writer: ResultWriter | None = None
+
+    def __enter__(self) -> Self:
+        if self._target is not None:
+            self._writer = ResultWriter(self._target.path, self._frame, self._names)
+            self._writer.__enter__()
+        return self
+
+    def put(self, name: str, first_step: int, values: np.ndarray) -> None:
+        """See `subside.maps.MapSink`."""
+        (self._writer or self._held).put(name, first_step, values)
+
+    def written(self) -> bool:
+        """Wait until all maps are in the file; whether their arrays may then be used again."""
+        if self._writer is None:
+            return False
+        self._writer.flush()
+        return True
+
+    def finish(self, numbers: xr.Dataset) -> xr.Dataset:
+        """Write the rest and give the result."""
+        if self._writer is None or self._target is None:
+            for name in self._names:
+                attributes = self._frame[name].attrs
+                numbers[name] = (self._frame[name].dims, self._held.whole(name), attributes)
+            return numbers
+        numbers.attrs["scenario_file"] = self._target.source
+        self._writer.finish(numbers)
+        self._writer.__exit__(None, None, None)
+        self._writer = None
+        return open_result(self._target.path)
+
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None,
+                 trace: TracebackType | None) -> None:
+        if self._writer is not None:  # not finished: nothing is left behind
+            error = error or _GivenUp("the run was given up")
+            with suppress(_GivenUp):
+                self._writer.__exit__(type(error), error, trace)
+
+
+class _GivenUp(Exception):
+    """A result that was not good enough is being made anew."""
+

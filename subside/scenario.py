@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import datetime as dt
 import difflib
+import glob
 import hashlib
 import tomllib
 from collections.abc import Mapping
@@ -85,6 +86,16 @@ def _date(value: object, info: ValidationInfo) -> dt.datetime:
 Date = Annotated[dt.datetime, BeforeValidator(_date)]
 
 
+def _files(value: object) -> tuple[str, ...]:
+    """One path or pattern, or a list of them."""
+    listed = value if isinstance(value, list) else [value]
+    if not listed or not all(isinstance(one, str) and one.strip() for one in listed):
+        raise InputError(f"grid.file = {value!r} is no file; write a path, a pattern with * such "
+                         "as \"pressure-*.nc\", or a list of them for files that continue each "
+                         "other in time.")
+    return tuple(listed)
+
+
 class _Table(BaseModel):
     model_config = ConfigDict(extra="forbid", arbitrary_types_allowed=True, frozen=True)
 
@@ -96,9 +107,12 @@ class TimeTable(_Table):
 
 
 class GridTable(_Table):
-    """`[[grid]]`: a pressure grid file and how to read it."""
+    """`[[grid]]`: a pressure grid and how to read it.
 
-    file: str
+    `file` holds paths, and patterns with ``*``: of several files each continues the one before it.
+    """
+
+    file: Annotated[tuple[str, ...], BeforeValidator(_files)]
     name: str = "main"
     crs: str | None = None
     initial_pressure: Any = None
@@ -201,6 +215,36 @@ class Scenario(_File):
                              ) from None
         return path
 
+    def grid_files(self) -> dict[str, Path]:
+        """Files of the pressure grid by their names in the scenario, patterns written out.
+
+        Raises
+        ------
+        InputError
+            If a pattern matches nothing, or a file comes twice.
+        """
+        files: dict[str, Path] = {}
+        for written in self.grid[0].file:
+            names = [written] if "*" not in written else self._matching(written)
+            for name in names:
+                path = self.resolve(name)
+                if path in files.values():
+                    raise InputError(f"scenario '{self.path}': grid.file names '{name}' twice; "
+                                     "each file adds its own dates, so name it once.")
+                files[name] = path
+        return files
+
+    def _matching(self, pattern: str) -> list[str]:
+        """Files that a pattern matches, as seen from the scenario; only ``*`` is special in it."""
+        text = glob.escape(pattern).replace("[*]", "*")
+        folder = self.path.parent
+        found = sorted(n for n in glob.glob(text, root_dir=folder) if (folder / n).is_file())
+        if not found:
+            raise InputError(f"scenario '{self.path}': grid.file = '{pattern}' matches no file in "
+                             f"'{folder.resolve()}'; check the pattern, which is relative to the "
+                             "scenario file.")
+        return found
+
 
 def load_scenario(path: str | Path) -> Scenario:
     """Read a scenario file.
@@ -265,9 +309,6 @@ def _explain(error: ValidationError, data: dict[str, Any]) -> str:
         return (f"key '{words}' is missing; add it (`subside init DIR` writes a scenario that "
                 "shows how).")
     value = first.get("input")
-    if words == "grid.file" and isinstance(value, list):
-        return ("grid.file is a list; this version takes one file for each grid. Join the files "
-                "along time into one.")
     shown = f" = {value!r}" if isinstance(value, (str, int, float, bool, list)) else ""
     return f"{words}{shown}: {first['msg'][0].lower()}{first['msg'][1:]}."
 

@@ -185,6 +185,104 @@ def test_text_and_checksum_are_those_of_the_file(tmp_path: Path) -> None:
     assert scenario.checksum == digest
 
 
+# -- the files of the grid ---------------------------------------------------------------------
+
+
+def with_files(written: str) -> str:
+    """A scenario whose grid has these files, in TOML."""
+    return SMALL.replace('"g.nc"', written)
+
+
+def test_one_file_a_list_or_a_pattern(tmp_path: Path) -> None:
+    for name in ("p2.nc", "p1.nc", "q.nc"):
+        (tmp_path / name).touch()
+    (tmp_path / "p3.nc").mkdir()  # a folder is no file
+    assert load(tmp_path, SMALL).grid[0].file == ("g.nc",)
+    assert load(tmp_path, SMALL).grid_files() == {"g.nc": tmp_path / "g.nc"}
+    found = load(tmp_path, with_files('["q.nc", "p2.nc"]')).grid_files()
+    assert list(found.items()) == [("q.nc", tmp_path / "q.nc"), ("p2.nc", tmp_path / "p2.nc")]
+    both = {n: tmp_path / n for n in ("p1.nc", "p2.nc")}
+    assert load(tmp_path, with_files('"p*.nc"')).grid_files() == both
+    assert load(tmp_path, with_files('["p*.nc", "q.nc"]')).grid_files() == (
+        both | {"q.nc": tmp_path / "q.nc"})
+
+
+def test_a_pattern_is_relative_to_the_scenario_and_only_its_star_is_special(
+        tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    folder = tmp_path / "run [1]?"
+    folder.mkdir()
+    (folder / "p1.nc").touch()
+    scenario = tmp_path / "scenario.toml"
+    load(tmp_path, with_files('"run [1]?/p*.nc"'))
+    monkeypatch.chdir(folder)
+    files = load_scenario(scenario).grid_files()
+    assert files == {"run [1]?/p1.nc": folder / "p1.nc"}
+    load(tmp_path, with_files(f'"{folder.as_posix()}/*.nc"'))
+    assert list(load_scenario(scenario).grid_files().values()) == [folder / "p1.nc"]
+
+
+@pytest.mark.parametrize(("written", "part"), [
+    ('"p*.nc"', r"grid.file = 'p\*.nc' matches no file in '.*'; check the pattern, which is "
+                "relative to the scenario file"),
+    ('["q.nc", "q.nc"]', "grid.file names 'q.nc' twice"),
+    ('["q.nc", "./q.nc"]', "grid.file names './q.nc' twice"),
+    ('["q.nc", "q*"]', "grid.file names 'q.nc' twice"),
+])
+def test_files_that_do_not_do(tmp_path: Path, written: str, part: str) -> None:
+    (tmp_path / "q.nc").touch()
+    scenario = load(tmp_path, with_files(written))
+    for use in (scenario.grid_files, lambda: sd.run(tmp_path / "scenario.toml")):
+        with pytest.raises(InputError, match=rf"scenario '.*scenario\.toml': {part}"):
+            use()
+
+
+@pytest.mark.parametrize("written", ["3", "[]", '[""]', '["a.nc", 3]', '""', "true", '[["a.nc"]]'])
+def test_what_is_no_file(tmp_path: Path, written: str) -> None:
+    with pytest.raises(InputError, match=r"scenario '.*': grid\.file = .* is no file; write a"):
+        load(tmp_path, with_files(written))
+
+
+HISTORY = [[300.0, 290.0], [270.0, 280.0], [220.0, 260.0], [200.0, 255.0], [190.0, 250.0]]
+
+
+def write_dates(path: Path, first: int, last: int) -> Path:
+    """Dates `first` to ``last - 1`` of two boxes."""
+    return write_boxes(path, [X0, X0 + 500], [Y0, Y0], 2900.0, 2950.0, 500.0, 500.0,
+                       HISTORY[first:last], years=[float(n) for n in range(first, last)])
+
+
+@pytest.mark.parametrize(("ranges", "names", "written"), [
+    ([(0, 1), (1, 2), (2, 3), (3, 4), (4, 5)], "bdace", '"part-*.nc"'),
+    ([(0, 3), (2, 4), (3, 5)], "cab", '["part-a.nc", "part-b.nc", "part-c.nc"]'),
+])
+def test_a_run_of_several_files_is_that_of_one(tmp_path: Path, ranges: list[tuple[int, int]],
+                                               names: str, written: str) -> None:
+    import hashlib
+    import json
+
+    write_points(tmp_path / "points.csv", [X0, X0 + 700], [Y0, Y0 + 100])
+    write_dates(tmp_path / "whole.nc", 0, len(HISTORY))
+    more = '[points]\nfile = "points.csv"\n[map]\nspacing = "500 m"'
+    whole = sd.run(write_scenario(tmp_path, grid="whole.nc", law=LINEAR, more=more,
+                                  name="whole.toml"), output=tmp_path / "whole-result.nc")
+    for (first, last), name in zip(ranges, names, strict=True):
+        write_dates(tmp_path / f"part-{name}.nc", first, last)
+    path = write_scenario(tmp_path, grid="X", law=LINEAR, more=more)
+    path.write_text(path.read_text().replace('"X"', written))
+    parts = sd.run(path, output=tmp_path / "result.nc")
+    assert parts.sizes["time"] == len(HISTORY)
+    for name in ("subsidence", "displacement_east", "point_subsidence", "bowl_volume"):
+        np.testing.assert_array_equal(parts[name].values, whole[name].values)
+    sums = json.loads(parts.attrs["input_checksums"])
+    files = [f"part-{name}.nc" for name in names]
+    assert set(sums) == {"scenario.toml", "points.csv", *files}
+    for name in files:
+        digest = hashlib.sha256((tmp_path / name).read_bytes()).hexdigest()
+        assert sums[name] == f"sha256:{digest}"
+    with pytest.raises(InputError, match=r"part-a\.nc' is an input of this run"):
+        sd.run(path, output=tmp_path / "part-a.nc", overwrite=True)
+
+
 # -- every form of a rock value through a run --------------------------------------------------
 
 

@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 import datetime as dt
+from functools import reduce
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
 import pytest
+import xarray as xr
 from invented_fields import HALF_SPACE, LINEAR, X0, Y0, write_boxes, write_points, write_scenario
 
 import subside as sd
 from subside.errors import InputError
-from subside.timeline import make_timeline
+from subside.timeline import StartGap, Timeline, make_timeline
 
 YEARS = [0.0, 2.0, 5.0]
 PRESSURE = np.array([[300.0, 310.0], [220.0, 290.0], [260.0, 150.0]])  # bar; falls, rises, falls
@@ -128,16 +131,82 @@ def test_start_at_a_later_step(tmp_path):
     np.testing.assert_array_equal(values(late), values(cut))
 
 
-def test_a_field_in_time_is_cut_at_the_start_too(tmp_path):
-    path = field(tmp_path, YEARS, PRESSURE)
-    cells = sd.open_grid(path.parent / "grid.nc")
-    cells["heat"] = (("time", "cell"), np.array([[0.0, 1.0], [2.0, 3.0], [8.0, 3.0]]),
-                     {"units": "K"})
-    line = make_timeline(cells, dt.datetime(2003, 7, 2, 9), None, "all")
-    # 3.5 years after 2000-01-01 is half way between 2 and 5 years
-    np.testing.assert_allclose(line.cells["heat"].values, [[5.0, 3.0], [8.0, 3.0]], rtol=1e-12)
-    assert line.cells["heat"].attrs == {"units": "K"}
-    np.testing.assert_allclose(line.axis.pressure, [0.0, 1.5 * 365.25 * 86400], rtol=1e-12)
+# -- rows of the run from dates of the file ----------------------------------------------------
+
+FILE = np.array([[0.0, 1.0], [2.0, 3.0], [8.0, 3.0], [9.0, 4.0]])
+"""On 2000-01-01 and every 365.25 days after."""
+
+
+def line(start: dt.datetime | None, initial: np.ndarray | None = None) -> Timeline:
+    """The dates of a grid of which only they are known."""
+    dates = np.datetime64("2000-01-01", "s") + np.arange(4) * np.timedelta64(8766, "h")
+    return make_timeline(xr.Dataset(coords={"time": dates}), start, initial, "all")
+
+
+@pytest.mark.parametrize(("start", "pressure", "heat"), [
+    (None, FILE, FILE),
+    (dt.datetime(2000, 12, 31, 6), FILE[1:], FILE[1:]),
+    # a quarter of the way from the second date to the third
+    (dt.datetime(2001, 4, 1, 13, 30), [[3.5, 3.0], *FILE[2:]], [[3.5, 3.0], *FILE[2:]]),
+    # before the file: the initial pressure; another field is as on the first date
+    (dt.datetime(1999, 1, 1), [[5.0, 6.0], *FILE], [FILE[0], *FILE]),
+])
+def test_rows(start: dt.datetime | None, pressure: object, heat: object) -> None:
+    """However the rows are asked for; the file is only asked for dates it has."""
+    rows = line(start, np.array([5.0, 6.0])).rows
+
+    def read(first: int, last: int) -> np.ndarray:
+        assert 0 <= first < last <= 4
+        return FILE[first:last]
+
+    wanted, field = np.array(pressure), np.array(heat)
+    assert rows.count == len(wanted)
+    for cuts in ([0, rows.count], [0, 1, rows.count], [0, 2, rows.count], range(rows.count + 1)):
+        legs = list(pairwise(cuts))
+        got = [rows.pressure(read, a, b, np.array([5.0, 6.0])) for a, b in legs]
+        np.testing.assert_allclose(np.concatenate(got), wanted, rtol=1e-15)
+        np.testing.assert_allclose(np.concatenate([rows.field(read, a, b) for a, b in legs]),
+                                   field, rtol=1e-15)
+    assert (FILE == [[0, 1], [2, 3], [8, 3], [9, 4]]).all()
+
+
+def test_the_axis_begins_at_the_start() -> None:
+    late = line(dt.datetime(2001, 4, 1, 13, 30))
+    np.testing.assert_allclose(late.axis.pressure, np.array([0, 0.75, 1.75]) * 8766 * 3600)
+    np.testing.assert_array_equal(late.axis.output, late.axis.pressure)
+    assert late.dates[0] == late.start == np.datetime64("2001-04-01T13:30")
+
+
+def test_a_start_before_the_file_needs_an_initial_pressure() -> None:
+    rows = line(dt.datetime(1999, 1, 1), np.zeros(2)).rows
+    assert rows.given
+    with pytest.raises(ValueError, match="initial pressure is needed"):
+        rows.pressure(lambda a, b: FILE[a:b], 0, 2)
+
+
+def test_initial_and_first_pressure_are_compared_where_both_are_there() -> None:
+    initial = np.zeros(2)
+    assert not line(None).compares
+    assert line(None, initial).compares
+    assert line(dt.datetime(2001, 1, 1), initial).compares
+    assert not line(dt.datetime(1999, 1, 1), initial).compares
+
+
+def test_the_worst_gap_of_blocks_in_any_order() -> None:
+    """Cells 7 and 2 differ most, by 5 bar: the lower is named. 1e-5 of the pressure passes."""
+    initial = np.full(10, 300e5)
+    first = initial + np.array([0, 1, 5, 0, 0, 3, 0, -5, 0, 0]) * 1e5
+    parts = [np.array([7, 8]), np.array([0, 1, 2]), np.array([3, 4, 5, 6, 9])]
+    for order in (parts, parts[::-1], [np.arange(10)]):
+        gap = reduce(StartGap.worse, (StartGap.of(initial[c], first[c], c) for c in order))
+        assert gap == StartGap(2, 300e5, 305e5)
+    with pytest.raises(InputError, match=r"start date 2000-01-01 by up to 5 bar \(300 against "
+                                         r"305 bar\)") as caught:
+        line(None, initial).refuse_gap(gap)
+    assert caught.value.cell == 2
+    line(None, initial).refuse_gap(StartGap(0, 300e5, 300e5 + 299))
+    with pytest.raises(InputError):
+        line(None, initial).refuse_gap(StartGap(0, 300e5, 300e5 + 301))
 
 
 # -- the initial pressure ----------------------------------------------------------------------

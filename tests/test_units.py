@@ -5,8 +5,9 @@ from __future__ import annotations
 import cf_units
 import pytest
 
+from subside import units
 from subside.errors import InputError
-from subside.units import parse_quantity, same_dimension, scale_to_si
+from subside.units import parse_memory, parse_quantity, same_dimension, scale_to_si
 
 # Exact by definition: bar, foot, US survey foot (1200/3937 m), pound-force (0.45359237 kg x
 # 9.80665 m/s2), barrel (42 gallons of 231 cubic inches); darcy from the SPE Metric Standard (1984).
@@ -83,3 +84,51 @@ def test_what_is_no_quantity_names_the_key(text: object, si: str, says: str) -> 
 def test_times_need_a_unit() -> None:
     with pytest.raises(InputError, match="times and rates need one"):
         parse_quantity(3, "s", name="delay_time", unit_needed=True)
+
+
+@pytest.mark.parametrize("word", sorted(units._everyday_words()))
+def test_everyday_words_mean_what_pint_says(word: str) -> None:
+    """The short list that is read first against the whole registry, factor and dimension."""
+    short, whole = (units._registry(everyday).Quantity(1.0, word) for everyday in (True, False))
+    if word == "degC":
+        short, whole = short.to("K"), whole.to("K")
+    short, whole = short.to_base_units(), whole.to_base_units()
+    assert short.magnitude == pytest.approx(whole.magnitude, rel=1e-14)
+    assert dict(short.dimensionality) == dict(whole.dimensionality)
+
+
+@pytest.mark.parametrize(("unit", "si", "factor"), [
+    # Prefixes and rarer words are not in the short list; ms is no plural of the metre.
+    ("ms", "s", 1e-3), ("hPa", "Pa", 100.0), ("min", "s", 60.0), ("cd/cd", "1", 1.0),
+    ("meters", "m", 1.0), ("hours", "s", 3600.0), ("mile", "m", 1609.344), ("µm", "m", 1e-6),
+    ("days", "s", 86400.0), ("m/days", "m/s", 1 / 86400),
+])
+def test_words_outside_the_short_list_are_whole_too(unit: str, si: str, factor: float) -> None:
+    assert scale_to_si(unit, si)[0] == pytest.approx(factor, rel=1e-14)
+
+
+def test_everyday_units_leave_the_whole_registry_alone() -> None:
+    """Reading the whole registry takes a quarter of a second of every start."""
+    units._registry.cache_clear()
+    units.scale_to_si.cache_clear()
+    units._parsed.cache_clear()
+    for unit, si in [("barsa", "Pa"), ("1/psi", "1/Pa"), ("kg m-3", "kg m-3"), ("mm/year", "m/s"),
+                     ("%", "1"), ("1e-3", "1"), ("ft", "m"), ("mD", "m2"), ("degC", "K")]:
+        scale_to_si(unit, si)
+    assert units._registry.cache_info().currsize == 1
+
+
+@pytest.mark.parametrize(("text", "size"), [
+    ("2 GB", 2 * 10**9), ("4GB", 4 * 10**9), ("1.5 TB", 15 * 10**11), ("512MiB", 512 * 2**20),
+    (" .5 GiB ", 2**29), ("8e9 B", 8 * 10**9), ("700 kB", 700_000),
+])
+def test_memory_in_bytes(text: str, size: int) -> None:
+    """SI prefixes are decimal, Ki, Mi, Gi, Ti are binary (IEC 80000-13)."""
+    assert parse_memory(text, name="--memory") == size
+
+
+@pytest.mark.parametrize("text", ["2", "", "GB", "2 gb", "2 Gb", "2 m", "two GB", "-1 GB", "0 GB",
+                                  "inf GB", "nan GB", "2 GB 3", "1e400 GB", "50 %", "2,5 GB"])
+def test_what_is_no_memory_names_the_option(text: str) -> None:
+    with pytest.raises(InputError, match=r'--memory = .*for example "2 GB"'):
+        parse_memory(text, name="--memory")

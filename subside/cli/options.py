@@ -1,7 +1,9 @@
-"""Options that several commands share, and progress bars."""
+"""Options that several commands share, loading without delay, and progress bars."""
 
 from __future__ import annotations
 
+import gc
+import re
 import sys
 import warnings
 from collections.abc import Callable, Iterator
@@ -11,9 +13,11 @@ from typing import Any, TypeVar
 
 import click
 
+from subside.errors import InputError
 from subside.progress import Progress
 
-__all__ = ["bars", "common", "json_option", "note_warnings", "plugin_option", "print_json"]
+__all__ = ["bars", "cluster_option", "common", "json_option", "loading", "memory_option",
+           "note_warnings", "plugin_option", "print_json", "workers_option"]
 
 F = TypeVar("F", bound=Callable[..., Any])
 
@@ -23,6 +27,46 @@ plugin_option = click.option(
 
 json_option = click.option("--json", "as_json", is_flag=True, help="Print facts as JSON.")
 
+_MOST_WORKERS = 10_000
+_ADDRESS = re.compile(r"([a-z]+://)?([\w.-]+|\[[0-9A-Fa-f:]+\]):(\d+)")
+
+
+def _memory(context: click.Context, option: click.Parameter, text: str | None) -> int | None:
+    from subside.units import parse_memory
+
+    return None if text is None else parse_memory(text, name="--memory")
+
+
+def _workers(context: click.Context, option: click.Parameter, count: int | None) -> int | None:
+    if count is not None and not 1 <= count <= _MOST_WORKERS:
+        raise InputError(f"--workers = {count} must be from 1 to {_MOST_WORKERS}; leave it out to "
+                         "take as many as the machine has cores.")
+    return count
+
+
+def _cluster(context: click.Context, option: click.Parameter, where: str | None) -> str | None:
+    if where is None or where == "local":
+        return where
+    found = _ADDRESS.fullmatch(where)
+    if not found or not 1 <= int(found[3]) <= 65535:
+        raise InputError(f"--cluster = '{where}' is neither 'local' nor the address of a Dask "
+                         "scheduler, HOST:PORT, for example tcp://10.0.0.5:8786.")
+    return where
+
+
+memory_option = click.option(
+    "--memory", metavar="SIZE", callback=_memory,
+    help="Most memory to take, such as '2 GB'. Default: from what the machine has free.")
+
+workers_option = click.option(
+    "--workers", type=int, metavar="N", callback=_workers,
+    help="How many blocks of cells to work on at once. Default: one for each core.")
+
+cluster_option = click.option(
+    "--cluster", metavar="ADDRESS", callback=_cluster,
+    help="Spread the work over a Dask cluster: the address of its scheduler, such as "
+         "tcp://10.0.0.5:8786, or 'local' for processes on this machine.")
+
 
 def common(function: F) -> F:
     """``--quiet`` and ``--debug``."""
@@ -30,6 +74,23 @@ def common(function: F) -> F:
                             help="Show the traceback of an error.")(function)
     return click.option("--quiet", "-q", is_flag=True,
                         help="No progress, no summary; errors only.")(function)
+
+
+@contextmanager
+def loading() -> Iterator[None]:
+    """Import large libraries: a hundred thousand objects that stay, so nothing to collect.
+
+    Searching them for rubbish while they are made, and again later, takes a third of the start.
+    """
+    if "numpy" in sys.modules:
+        yield
+        return
+    gc.disable()
+    try:
+        yield
+    finally:
+        gc.freeze()
+        gc.enable()
 
 
 def print_json(facts: dict[str, Any]) -> None:

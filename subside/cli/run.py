@@ -7,7 +7,18 @@ from typing import TYPE_CHECKING
 
 import click
 
-from subside.cli.options import bars, common, json_option, note_warnings, plugin_option, print_json
+from subside.cli.options import (
+    bars,
+    cluster_option,
+    common,
+    json_option,
+    loading,
+    memory_option,
+    note_warnings,
+    plugin_option,
+    print_json,
+    workers_option,
+)
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -25,22 +36,28 @@ if TYPE_CHECKING:
 @click.option("--no-figures", is_flag=True, help="Write no pictures.")
 @click.option("--survey", type=click.Path(path_type=Path), metavar="FILE",
               help="Measured values to draw over the curves. Default: [survey] file.")
+@memory_option
+@workers_option
+@cluster_option
 @plugin_option
 @json_option
 @common
 def command(scenario_file: Path, output: Path | None, overwrite: bool, no_figures: bool,
-            survey: Path | None, plugins: tuple[Path, ...], as_json: bool, quiet: bool) -> None:
+            survey: Path | None, memory: int | None, workers: int | None, cluster: str | None,
+            plugins: tuple[Path, ...], as_json: bool, quiet: bool) -> None:
     """Compute subsidence: result file, figures, one summary table.
 
     \b
     Example:
         subside run marrow-fen/scenario.toml -o bowl.nc
+        subside run marrow-fen/scenario.toml --memory "2 GB" --workers 2
     """
-    from subside.cli.summary import facts_of, print_summary
-    from subside.pipeline import run
-    from subside.result_file import ResultFile
-    from subside.scenario import load_scenario
-    from subside.survey.overlay import read_survey
+    with loading():
+        from subside.cli.summary import facts_of, print_summary
+        from subside.pipeline import run
+        from subside.result_file import ResultFile
+        from subside.scenario import load_scenario
+        from subside.survey.overlay import read_survey
 
     note_warnings()
     scenario = load_scenario(scenario_file)
@@ -57,7 +74,7 @@ def command(scenario_file: Path, output: Path | None, overwrite: bool, no_figure
         refuse_figures(stem, target.source, overwrite)
     with bars(quiet) as progress:
         result = run(scenario, output=path, overwrite=overwrite, plugins=plugins,
-                     progress=progress)
+                     progress=progress, memory=memory, workers=workers, cluster=cluster)
         files = [path]
         if not no_figures:
             with progress.stage("figures", 1, "set") as advance:

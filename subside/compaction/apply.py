@@ -1,86 +1,63 @@
 """Which law on which cell: from the pressure history to the strength of every source.
 
-A source closes vertically and releases horizontal stress. Both are carried as moments in m3, and
-every elastic kernel is put together from a closing crack and a nucleus of strain::
-
-    field = closure moment x crack + contraction moment x nucleus
-    contraction moment = g e V,   closure moment = (1 - g) e V
-
-with e the strain of the law, V the net bulk volume and g the horizontal release: 1 where the
-reservoir is as stiff as its host ("matched"), G_res/G_host for a reservoir that releases
-horizontal stress by its own stiffness ("own"). With the secant stiffness of the law,
-G_res = (1-2nu)/(2(1-nu)) a Dp/e, the second becomes g e V = a Dp V / M_host, with no division by a
-strain that may vanish.
+The history comes in legs of some dates and the cells in blocks that are stored together. What a
+block remembers from leg to leg is its `State`; how dates are cut into legs and cells into blocks
+changes nothing.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 import xarray as xr
 
-from subside.api import EarthModel, History, InputError
-from subside.compaction.rock import Block, field_of_cells, place
+from subside.api import EarthModel
+from subside.compaction.fields import Streams, field_of_cells
+from subside.compaction.findings import Findings
+from subside.compaction.march import Marching
+from subside.compaction.piece import Field, Piece, Work
+from subside.compaction.rock import Block, Part
+from subside.compaction.span import Span
+from subside.compaction.strength import Strength, releases_all
 from subside.timeline import TimeAxis
 
-__all__ = ["Compaction", "compact"]
+__all__ = ["Compactor", "State", "Strength"]
 
-_CELLS_AT_ONCE = 50_000
-_STRAIN_ALARM = 0.005
+_CELLS = 16_384
+"""Cells of a piece: enough to make the cost of a call small."""
+_VALUES = 131_072
+"""Dates times cells worked on together: arrays of 1 MB, which stay in a processor's own cache."""
 
 
 @dataclass
-class Compaction:
-    """What the cells do at the output dates.
+class State:
+    """What is remembered of a storage block from leg to leg.
 
     Attributes
     ----------
-    strain : array (nt, cell)
-        Uniaxial strain, shortening positive.
-    contraction, closure : array (nt, cell)
-        Moments in m3, see the module.
-    volume_lost : array (nt, cell)
-        Strain times net bulk volume, m3.
+    cells : array of int (m,)
+        Its cells in the dataset.
+    pieces : list of Piece
+    rows : int
+        Pressure rows it has been given.
+    findings : Findings
     """
 
-    strain: np.ndarray
-    contraction: np.ndarray
-    closure: np.ndarray | None
-    net_volume: np.ndarray
-    warnings: list[str] = field(default_factory=list)
-
-    @property
-    def volume_lost(self) -> np.ndarray:
-        return self.strain * self.net_volume
-
-    @property
-    def moments(self) -> dict[str, np.ndarray]:
-        """Moments by source kind; a kind that no cell uses is left out."""
-        found = {"contraction": self.contraction}
-        if self.closure is not None:
-            found["closure"] = self.closure
-        return found
+    cells: np.ndarray
+    pieces: list[Piece]
+    rows: int = 0
+    findings: Findings = field(default_factory=Findings)
 
 
-def compact(
-    dataset: xr.Dataset,
-    pressure: np.ndarray,
-    axis: TimeAxis,
-    blocks: Sequence[Block],
-    earth: EarthModel,
-    depth: np.ndarray,
-    progress: Callable[[int], None] = lambda cells: None,
-) -> Compaction:
-    """Apply every block's law to its cells.
+class Compactor:
+    """Applies every block's law to its cells, leg by leg. Its methods may run in several threads.
 
     Parameters
     ----------
     dataset : Dataset
-        The cell dataset.
-    pressure : array (np, cell)
-        Absolute pressure in Pa at `axis.pressure`; the first row is the initial pressure.
+        The cell dataset: `volume`, static fields, and where the cells are in their file.
     axis : TimeAxis
     blocks : sequence of Block
         From `assign_blocks`.
@@ -88,135 +65,125 @@ def compact(
         Its modulus is the host's, for ``horizontal_release = "own"`` and for the warning.
     depth : array (cell,)
         Depth of the cell centres below the ground or seabed, m.
-    progress : callable
-        Told the number of cells finished since the last call.
-
-    Raises
-    ------
-    InputError
-        From a law, or when a law returns numbers that are not finite.
+    streams : mapping of str to mapping, optional
+        Attributes of the fields in time, as for `assign_blocks`.
     """
-    cells = dataset.sizes["cell"]
-    nt = axis.output.size
-    net = np.array(dataset["volume"].values, dtype=float)
-    if "net_to_gross" in dataset:
-        ratio = np.ones(cells)
-        for block in blocks:
-            if block.table.apply_net_to_gross:
-                ratio[block.cells] = field_of_cells(
+
+    def __init__(self, dataset: xr.Dataset, axis: TimeAxis, blocks: Sequence[Block],
+                 earth: EarthModel, depth: np.ndarray, streams: Streams | None = None) -> None:
+        self._axis = axis
+        self._blocks = list(blocks)
+        self._owner = np.zeros(dataset.sizes["cell"], dtype=np.int16)
+        bulk = dataset["volume"].values
+        net = bulk
+        for number, block in enumerate(self._blocks):
+            self._owner[block.cells] = number
+            if block.table.apply_net_to_gross and "net_to_gross" in dataset:
+                if net is bulk:  # a copy of all cells may be a large thing
+                    net = np.array(bulk, dtype=float)
+                net[block.cells] *= field_of_cells(
                     dataset, "net_to_gross", "1", f"{block.where} apply_net_to_gross", block.cells)
-        net *= ratio
-    strain = np.zeros((nt, cells))
-    contraction = np.zeros((nt, cells))
-    rise = np.zeros(cells)
-    warnings: list[str] = []
-    for block in blocks:
-        for start in range(0, block.cells.size, _CELLS_AT_ONCE):
-            part = slice(start, start + _CELLS_AT_ONCE)
-            index = block.cells[part]
-            history = _history(dataset, pressure, axis, block, part)
-            law_strain = _strain_of(block, history, part, dataset)
-            keep = np.searchsorted(history.time, axis.output)
-            strain[:, index] = law_strain[keep]
-            drop_stress = history.stress_rise[keep]
-            rise[index] = drop_stress[-1]
-            contraction[:, index] = net[index] * _released(
-                block, part, law_strain[keep], drop_stress, earth, depth[index])
-            progress(index.size)
-        warnings += _mismatch(block, strain[-1], rise, earth, depth)
-    _alarm(strain, dataset, warnings)
-    closure = strain * net - contraction
-    # A crack share that is only rounding is none: the classic nucleus stays one kernel.
-    scale = float(np.abs(contraction).max(initial=0.0))
-    has_closure = bool(np.abs(closure).max(initial=0.0) > 1e-14 * scale)
-    return Compaction(strain, contraction, closure if has_closure else None, net, warnings)
+        self._field = Field(dataset, streams or {}, earth, net, depth, axis.output.size)
+        used = [block for block in self._blocks if block.cells.size]
+        self._alike = [releases_all(block) for block in self._blocks]
+        self.sources: tuple[str, ...] = ("contraction",)
+        """Kinds of source that some cell uses."""
+        if not all(releases_all(block) for block in used):
+            self.sources = ("contraction", "closure")
+        self._portions = [_takes_portions(block) for block in self._blocks]
+        self.whole_history = not all(self._portions)
+        """Whether all rows must come in one leg: some law offers `strain` alone."""
+        self.fields: tuple[str, ...] = tuple(sorted(
+            {name for block in used for name in block.law.needs if name in self._field.streams}))
+        """Fields in time that `advance` wants."""
+
+    def output_range(self, first: int, last: int) -> tuple[int, int]:
+        """Output dates ``(a, b)``, a to b - 1, that pressure rows first to last - 1 give."""
+        return Span(self._axis, first, last).dates
+
+    def begin(self, cells: np.ndarray) -> State:
+        """The state of a storage block at the start; its cells in the dataset, ascending."""
+        cells = np.asarray(cells)
+        owner = self._owner[cells]
+        pieces = []
+        for number, block in enumerate(self._blocks):
+            columns = np.flatnonzero(owner == number)
+            for start in range(0, columns.size, _CELLS):
+                some = columns[start:start + _CELLS]
+                part = cells[some]
+                if block.cells.size != self._owner.size:
+                    part = np.searchsorted(block.cells, part)
+                pieces.append(Piece(number, _plain(some), _plain(part)))
+        return State(cells, pieces)
+
+    def advance(self, state: State, first: int, last: int, pressure: np.ndarray,
+                fields: Mapping[str, np.ndarray] | None = None, *,
+                keep_strain: bool = False) -> Strength:
+        """Take a block's pressure rows first to last - 1 and give the output dates among them.
+
+        Parameters
+        ----------
+        state : State
+            Of the block; changed.
+        first, last : int
+            Rows of `axis.pressure`, in order without a gap; the first call starts at row 0, the
+            initial pressure.
+        pressure : array (last - first, m)
+            Absolute pressure, Pa.
+        fields : mapping of str to array (last - first, m), optional
+            The fields in time named by `self.fields`, in the unit `streams` says.
+        keep_strain : bool
+            Whether the strain itself is wanted.
+
+        Raises
+        ------
+        InputError
+            From a law, when a law returns numbers that are not finite, or where a field in time
+            has no value.
+        """
+        if first != state.rows or pressure.shape != (last - first, state.cells.size):
+            raise ValueError(f"rows {first} to {last - 1} as {pressure.shape}: expected from row "
+                             f"{state.rows} on, {state.cells.size} cells")
+        start, stop = self.output_range(first, last)
+        closure = not all(self._alike[piece.block] for piece in state.pieces)
+        strength = Strength.empty(stop - start, state.cells.size, closure, keep_strain)
+        whole = first == 0 and last == self._axis.pressure.size
+        spans: dict[tuple[int, int], Span] = {}
+        if self.whole_history and not whole:
+            raise ValueError("a law needs the whole history in one leg")
+        for piece in state.pieces:
+            block = self._blocks[piece.block]
+            at_once = whole and not isinstance(block.law, Marching)
+            work = Work(piece, block, self._field, state.cells, state.findings, at_once)
+            if first == 0:
+                work.begin(pressure[0])
+            step = last - first if at_once else max(1, _VALUES // piece.initial.size)
+            for row in range(first, last, step):
+                end = min(row + step, last)
+                if (row, end) not in spans:
+                    spans[row, end] = Span(self._axis, row, end)
+                span, rows = spans[row, end], slice(row - first, end - first)
+                given = {name: (fields or {})[name][rows] for name in work.in_time}
+                work.advance(span, pressure[rows], given, strength, span.dates[0] - start)
+        state.rows = last
+        return strength
+
+    def warnings(self, findings: Iterable[Findings]) -> list[str]:
+        """What there is to say in the end, from the findings of all states."""
+        return Findings.together(findings).warnings(self._blocks, self._field.dataset)
 
 
-def _history(dataset: xr.Dataset, pressure: np.ndarray, axis: TimeAxis, block: Block,
-             part: slice) -> History:
-    """Depletion and fields of some cells on the union of pressure and output dates."""
-    index = block.cells[part]
-    time = axis.union
-    drop = _linear_in_time(axis.pressure, pressure[0, index] - pressure[:, index], time)
-    biot = block.rock(part).biot
-    fields: dict[str, np.ndarray] = {}
-    for name in block.law.needs:
-        values = field_of_cells(dataset, name, None, f"{block.where}: law '{block.law.name}'",
-                                index)
-        if values.ndim > 1:
-            values = _linear_in_time(axis.pressure, values, time)
-        fields[name] = values
-    arrays: Mapping[str, np.ndarray] = {"drop": drop, "rise": biot * drop, **fields}
-    for array in arrays.values():
-        array.flags.writeable = False
-    return History(time=time, pressure_drop=drop, stress_rise=arrays["rise"], fields=fields)
+def _takes_portions(block: Block) -> bool:
+    """Whether a block's law can be taken up where it was left; of no cells, any can."""
+    some = slice(0, 1)
+    if not block.cells.size or isinstance(block.law, Marching):
+        return True
+    with block.speaking(some):
+        return block.law.start(block.rock(some)) is not None
 
 
-def _linear_in_time(known: np.ndarray, values: np.ndarray, wanted: np.ndarray) -> np.ndarray:
-    """Values (np, cell) at `known` times, linear between them, at `wanted` times."""
-    if known.size == wanted.size:
-        return np.ascontiguousarray(values)
-    left = np.clip(np.searchsorted(known, wanted, side="right") - 1, 0, known.size - 2)
-    share = ((wanted - known[left]) / (known[left + 1] - known[left]))[:, None]
-    return np.asarray(values[left] * (1 - share) + values[left + 1] * share)
-
-
-def _strain_of(block: Block, history: History, part: slice, dataset: xr.Dataset) -> np.ndarray:
-    with block.speaking(part):
-        strain = np.asarray(block.law.strain(history, block.rock(part)))
-    expected = history.pressure_drop.shape
-    if strain.shape != expected:
-        raise InputError(f"{block.where}: law '{block.law.name}' returned strain of shape "
-                         f"{strain.shape}; (time, cell) = {expected} is expected.")
-    if not np.isfinite(strain).all():
-        first = int(block.cells[part][np.nonzero(~np.isfinite(strain).all(axis=0))[0][0]])
-        raise InputError(f"{block.where}: law '{block.law.name}' gives no finite strain in "
-                         f"{place(dataset, first)}; check its parameters there.")
-    return strain
-
-
-def _released(block: Block, part: slice, strain: np.ndarray, stress_rise: np.ndarray,
-              earth: EarthModel, depth: np.ndarray) -> np.ndarray:
-    """g e, the strain of the contraction part."""
-    release = block.release
-    if isinstance(release, np.ndarray):
-        return np.asarray(strain * release[part])
-    if release == "matched":
-        return strain
-    if release == "own":
-        return np.asarray(stress_rise / earth.modulus_at(depth))
-    return strain * release
-
-
-def _mismatch(block: Block, last_strain: np.ndarray, last_rise: np.ndarray, earth: EarthModel,
-              depth: np.ndarray) -> list[str]:
-    """Says when a reservoir unlike its host is treated as if it were alike.
-
-    Judged at the last output date: strain and stress rise (cell,) of that date.
-    """
-    if block.table.horizontal_release != "matched" or not earth.has_modulus or not block.cells.size:
-        return []
-    rise = last_rise[block.cells]
-    fell = rise > 0.1 * max(float(rise.max()), 1.0)
-    if not fell.any():
-        return []
-    ratio = np.median(last_strain[block.cells][fell] / rise[fell]
-                      * np.broadcast_to(earth.modulus_at(depth[block.cells]), rise.shape)[fell])
-    if 0.5 <= ratio <= 2.0:
-        return []
-    word = "softer" if ratio > 1 else "stiffer"
-    return [f"{block.where}: strain over stress rise is {ratio:.2g} times 1/M of the host: the "
-            f"reservoir is {word} than its host, and horizontal_release = \"matched\" then "
-            "misstates the shape of the bowl (up to about 25 % of the peak at a compressibility "
-            "3 times the host's, computed independently by finite elements); consider "
-            "horizontal_release = \"own\"."]
-
-
-def _alarm(strain: np.ndarray, dataset: xr.Dataset, warnings: list[str]) -> None:
-    """Sandstone production strain is normally below 0.5 % (common practice, no source)."""
-    largest = float(strain.max(initial=0.0))
-    if largest > _STRAIN_ALARM:
-        cell = int(np.unravel_index(strain.argmax(), strain.shape)[1])
-        warnings.append(f"strain reaches {100 * largest:.2g} % in {place(dataset, cell)}; "
-                        "sandstone normally stays below 0.5 %: check the compressibility and its "
-                        "unit.")
+def _plain(places: np.ndarray) -> Part:
+    """Ascending places as a slice where they follow each other, else as small numbers."""
+    if places.size and places[-1] - places[0] == places.size - 1:
+        return slice(int(places[0]), int(places[-1]) + 1)
+    return places.astype(np.int32)

@@ -40,6 +40,10 @@ class Linear(MemoryLaw):
             return rock.uniaxial_compressibility
         return rock.unloading_compressibility
 
+    def remembers(self, rock: Rock) -> bool:
+        """Whether unloading differs from loading."""
+        return rock.unloading_compressibility is not None
+
     def permanent(self, largest: Any, rock: Rock) -> Any:
         """(Cm - Cu) x largest stress."""
         return (rock.uniaxial_compressibility - self.unloading(rock)) * largest

@@ -18,12 +18,13 @@ Derived here from these two rules.
 from __future__ import annotations
 
 from abc import abstractmethod
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from typing import Any
 
 import numpy as np
 
-from subside.api import History, InputError, Law, Rock
+from subside.api import InputError, Rock
+from subside.compaction.march import Marching
 
 __all__ = ["MemoryLaw", "refuse"]
 
@@ -31,7 +32,7 @@ Number = Any
 """A float or an array (cell,)."""
 
 
-class MemoryLaw(Law):
+class MemoryLaw(Marching):
     """A virgin curve, and one line for unloading and reloading below the largest stress."""
 
     @abstractmethod
@@ -42,34 +43,29 @@ class MemoryLaw(Law):
     def permanent(self, largest: Number, rock: Rock) -> Number:
         """Strain that stays after unloading from `largest` (Pa, yield stress): its C - Cu part."""
 
-    def strain(self, history: History, rock: Rock) -> np.ndarray:
-        """Uniaxial strain (nt, cell), shortening positive, zero at the start."""
-        strain = np.zeros_like(history.stress_rise, dtype=float)
-        largest = self.start(rock)
-        for now in range(1, history.time.size):
-            largest = self._felt(largest, history.stress_rise[now], rock)
-            strain[now] = self._strain(largest, history.stress_rise[now], rock)
-        return strain
+    def remembers(self, rock: Rock) -> bool:
+        """False where the virgin curve is the line of unloading itself: nothing stays."""
+        return True
 
     def start(self, rock: Rock) -> Number:
         """Largest `yield_biot` x depletion ever felt, Pa: scalar or (cell,)."""
         return rock.previous_stress_rise
 
-    def advance(
-        self, state: Number, t0: float, t1: float, rise0: np.ndarray, rise1: np.ndarray,
-        fields: Mapping[str, tuple[np.ndarray, np.ndarray]], rock: Rock,
-    ) -> tuple[Number, np.ndarray]:
-        """The largest stress and the strain (cell,) at `t1`; see `Law.advance`."""
-        largest = self._felt(state, rise1, rock)
-        return largest, self._strain(largest, rise1, rock)
-
-    @staticmethod
-    def _felt(largest: Number, rise: np.ndarray, rock: Rock) -> Number:
-        return np.maximum(largest, rise * (rock.yield_biot / rock.biot))
-
-    def _strain(self, largest: Number, rise: np.ndarray, rock: Rock) -> np.ndarray:
+    def march(self, state: Number, time: np.ndarray, rise: np.ndarray,
+              rock: Rock) -> tuple[Number, np.ndarray]:
+        """The largest stress (cell,) and the strain (n, cell); see `Marching.march`."""
+        strain = self.unloading(rock) * rise[1:]
+        if not self.remembers(rock):
+            return state, strain
+        ratio = rock.biot / rock.yield_biot
+        largest = rise[1:] * (rock.yield_biot / rock.biot)
+        for now in range(largest.shape[0]):
+            np.maximum(largest[now], state, out=largest[now])
+            state = largest[now]
         lost = self.permanent(largest, rock) - self.permanent(self.start(rock), rock)
-        return np.asarray(self.unloading(rock) * rise + (rock.biot / rock.yield_biot) * lost)
+        lost *= ratio
+        strain += lost
+        return np.array(state), strain
 
 
 def refuse(bad: Number, message: Callable[[Callable[[Number], float]], str]) -> None:

@@ -11,14 +11,18 @@ import numpy as np
 import xarray as xr
 
 from subside.api import COMMON_LAW_PARAMETERS, InputError, Law, Parameter, Rock
+from subside.compaction.fields import Streams, field_of_cells, place, scale_of_field
 from subside.errors import PluginError, located, nearest
 from subside.scenario import ByRegion, CellField, CompactionTable, RockValue, parameter_value
-from subside.units import same_dimension, scale_to_si
 
-__all__ = ["Block", "assign_blocks", "field_of_cells", "place"]
+__all__ = ["Block", "Part", "assign_blocks"]
 
 _RELEASE = Parameter("horizontal_release", "1", "horizontal stress released over that of a "
                      "reservoir as stiff as its host", minimum=0.0, example="1.0")
+
+
+Part = slice | np.ndarray
+"""Some of a block's cells: their places in `Block.cells`."""
 
 
 class Block:
@@ -33,12 +37,13 @@ class Block:
     """
 
     def __init__(self, table: CompactionTable, law: Law, where: str, cells: np.ndarray,
-                 dataset: xr.Dataset) -> None:
+                 dataset: xr.Dataset, streams: Streams) -> None:
         self.table = table
         self.law = law
         self.where = where
         self.cells = cells
         self._dataset = dataset
+        self._streams = streams
         regions = [str(r) for r in dataset["region_name"].values]
         declared = {p.name: p for p in (*COMMON_LAW_PARAMETERS, *law.parameters)}
         for key in table.parameters:
@@ -60,12 +65,19 @@ class Block:
                         for name, value in self.values.items()}
         self.release = self._release(regions)
         for name in law.needs:
-            field_of_cells(dataset, name, None, f"{where}: law '{law.name}'", cells)
+            scale_of_field(dataset, streams, name, None, self.by_law)
+            if name not in streams:
+                field_of_cells(dataset, name, None, self.by_law, cells)
         with self.speaking(slice(None)):
             law.check(self.rock(slice(None)))
 
+    @property
+    def by_law(self) -> str:
+        """Who asks for a field, for messages."""
+        return f"{self.where}: law '{self.law.name}'"
+
     @contextmanager
-    def speaking(self, part: slice) -> Iterator[None]:
+    def speaking(self, part: Part) -> Iterator[None]:
         """Errors of the law, with this block and the place in the grid put before them.
 
         `part` says which of the block's cells the law was given.
@@ -80,7 +92,7 @@ class Block:
                               f"{type(error).__name__}: {error}. This is a fault of the law; "
                               "run again with --debug and tell its author.") from error
 
-    def rock(self, part: slice) -> Rock:
+    def rock(self, part: Part) -> Rock:
         """Parameters of a part of the block's cells: floats, or arrays (cell,), or None."""
         return SimpleNamespace(**{
             name: _read_only(value[part]) if isinstance(value, np.ndarray) else value
@@ -102,11 +114,12 @@ class Block:
         if value is None or isinstance(value, (int, float)):
             return value
         if isinstance(value, CellField):
-            values = field_of_cells(self._dataset, value.name, parameter.unit,
-                                    f"{self.where} {parameter.name}", self.cells)
-            if values.ndim > 1:
-                raise InputError(f"{self.where} {parameter.name}: the field '{value.name}' changes "
-                                 "with time; a rock parameter must not.")
+            where = f"{self.where} {parameter.name}"
+            scale_of_field(self._dataset, self._streams, value.name, parameter.unit, where)
+            if value.name in self._streams:
+                raise InputError(f"{where}: the field '{value.name}' changes with time; a rock "
+                                 "parameter must not.")
+            values = field_of_cells(self._dataset, value.name, parameter.unit, where, self.cells)
             for at in (int(values.argmin()), int(values.argmax())) if values.size else ():
                 try:
                     parameter.check(float(values[at]), float(values[at]),
@@ -135,56 +148,8 @@ def _read_only(values: np.ndarray) -> np.ndarray:
     return view
 
 
-def field_of_cells(dataset: xr.Dataset, name: str, si_unit: str | None, where: str,
-                   cells: np.ndarray) -> np.ndarray:
-    """A grid field for some cells: (n,) or (time, n).
-
-    `si_unit` is the unit it comes back in; None: the SI unit of whatever it measures (a law that
-    asks for a field knows what it needs).
-
-    Raises
-    ------
-    InputError
-        If the grid has no such field, or it has no unit or one of another kind, or has gaps.
-    """
-    reserved = {"corners", "centroid", "k", "j", "i", "edge", "region", "pressure"}
-    known = [str(v) for v in dataset.data_vars if str(v) not in reserved
-             and "cell" in dataset[v].dims]
-    if name not in known:
-        raise InputError(f"{where}: the grid has no field '{name}'." + nearest(name, known))
-    variable = dataset[name]
-    unit = variable.attrs.get("units")
-    if unit is None:
-        problem = variable.attrs.get("units_problem", "it has no units attribute")
-        example = f"for example '{si_unit}'" if si_unit else "'1' for a plain number"
-        raise InputError(f"{where}: the grid's field '{name}' cannot be used, {problem}; give it "
-                         f"units, {example}.")
-    si_unit = si_unit or str(unit)
-    if not same_dimension(str(unit), si_unit):
-        raise InputError(f"{where}: the grid's field '{name}' is in '{unit}', which is not a unit "
-                         f"of this parameter (such as '{si_unit}').")
-    factor, offset = scale_to_si(str(unit), si_unit)
-    values = np.asarray(variable.transpose(..., "cell").values, dtype=float)[..., cells]
-    values = values * factor + offset
-    bad = ~np.isfinite(values)
-    if bad.any():
-        wrong = cells[bad.any(axis=0) if bad.ndim > 1 else bad]
-        count = f"{wrong.size} active cell{'s' if wrong.size > 1 else ''}"
-        raise InputError(f"{where}: the grid's field '{name}' has no value in {count}, first "
-                         f"{place(dataset, int(wrong[0]))}; fill the gaps or mark the cells "
-                         "inactive.")
-    return values
-
-
-def place(dataset: xr.Dataset, cell: int) -> str:
-    """Where a cell stands in its file: ``(k=1, j=2, i=3)`` or ``(cell=17)``."""
-    names = "kji" if "k" in dataset else ("cell_id",)
-    return "(" + ", ".join(f"{n.removesuffix('_id')}={dataset[n].values[cell]}"
-                           for n in names) + ")"
-
-
 def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any]],
-                  dataset: xr.Dataset) -> list[Block]:
+                  dataset: xr.Dataset, streams: Streams | None = None) -> list[Block]:
     """Each cell to exactly one block.
 
     Parameters
@@ -195,6 +160,8 @@ def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any
         Law class by name.
     dataset : Dataset
         The cell dataset.
+    streams : mapping of str to mapping, optional
+        Attributes of the fields in time, which are not in the dataset; see `fields`.
 
     Raises
     ------
@@ -235,8 +202,9 @@ def assign_blocks(tables: Sequence[CompactionTable], laws: Mapping[str, type[Any
         owner[owner < 0] = rest
     blocks = []
     for number, table in enumerate(tables):
-        cells = np.nonzero(owner[region] == number)[0]
-        blocks.append(Block(table, laws[table.law](), _where(tables, number), cells, dataset))
+        cells = np.nonzero(owner[region] == number)[0].astype(np.int32)
+        blocks.append(Block(table, laws[table.law](), _where(tables, number), cells, dataset,
+                            streams or {}))
     return blocks
 
 

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from subside.earth.inputs import require_known, require_positive
 
-__all__ = ["gauss_order"]
+__all__ = ["gauss_order", "gauss_reach"]
 
 # (factor, power) of the measured bound factor n^power rho^-2n; see `gauss_order`.
 _BOUND = {
@@ -73,23 +75,43 @@ def gauss_order(
     tolerance. Over a rigid basement the rest of the kernel is smoother in the source's place
     than this half-space part, so that the rule holds there too.
     """
-    require_known("direction", direction, ("horizontal", "vertical"))
-    require_known("quantity", quantity, ("displacement", "gradient"))
     require_positive("half-size of a cell", "m", half_size, zero=True)
     require_positive("depth of the top of a cell", "m", distance)
+    ratio = np.asarray(half_size, dtype=float) / np.asarray(distance, dtype=float)
+    most = 8
+    reach = gauss_reach(most, tolerance, direction, quantity)
+    while ratio.size and ratio.max() > reach[-1]:
+        most *= 2
+        reach = gauss_reach(most, tolerance, direction, quantity)
+    return np.asarray(1 + np.searchsorted(reach, ratio), dtype=np.int64)
+
+
+@lru_cache(maxsize=64)
+def gauss_reach(most: int, tolerance: float, direction: str,
+                quantity: str) -> NDArray[np.float64]:
+    """Largest half_size/distance for which 1, 2, ... `most` Gauss points do; see `gauss_order`.
+
+    Returns
+    -------
+    ndarray (most,)
+        Ascending, read-only.
+
+    Raises
+    ------
+    InputError
+        As `gauss_order`.
+    """
+    require_known("direction", direction, ("horizontal", "vertical"))
+    require_known("quantity", quantity, ("displacement", "gradient"))
     require_positive("tolerance", "-", tolerance)
     factor, power = _BOUND[direction, quantity]
-    half, depth = np.broadcast_arrays(
-        np.asarray(half_size, dtype=float), np.asarray(distance, dtype=float)
-    )
+    n = np.arange(1, most + 1)
+    # ln rho is asinh(delta) across and acosh(1 + delta) down; it must reach half of this
+    decay = np.maximum(np.log(_DIRECTIONS * factor * n**power / tolerance) / n, 0.0)
+    across = direction == "horizontal"
     with np.errstate(divide="ignore"):
-        delta = depth / half
-    # ln rho is asinh(delta) across and acosh(1 + delta) down
-    decay = 2.0 * (np.arcsinh(delta) if direction == "horizontal" else np.arccosh(1.0 + delta))
-    wanted = np.log(_DIRECTIONS * factor / tolerance)
-    order = np.ones(delta.shape, dtype=np.int64)
-    while True:  # from below, so it ends on the least order that satisfies the bound
-        need = np.maximum(np.ceil((wanted + power * np.log(order)) / decay), 1.0).astype(np.int64)
-        if (need <= order).all():
-            return order
-        order = np.maximum(order, need)
+        # 2 sinh(x/2)^2 is cosh(x) - 1
+        reach = 1.0 / (np.sinh(0.5 * decay) if across else 2.0 * np.sinh(0.25 * decay) ** 2)
+    reach = np.maximum.accumulate(reach)  # at tolerances above 1 a larger n may do worse
+    reach.flags.writeable = False
+    return reach

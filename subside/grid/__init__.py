@@ -6,20 +6,35 @@ A cell dataset is an `xarray.Dataset` of active cells in SI, depth positive down
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
-
-from subside.errors import CannotDo, InputError, located
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["edge_depletion", "open_grid", "summarise"]
+    from subside.grid.stream import HeldStream, Stream
+    from subside.grid.watch import PressureWatch
+
+__all__ = ["HeldStream", "PressureWatch", "Stream", "edge_depletion", "open_cells", "open_grid",
+           "summarise"]
+
+
+def __getattr__(name: str) -> Any:
+    # compiled code is not loaded by those who only ask for --help
+    if name in {"Stream", "HeldStream"}:
+        from subside.grid import stream
+
+        return getattr(stream, name)
+    if name == "PressureWatch":
+        from subside.grid.watch import PressureWatch
+
+        return PressureWatch
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
 
 
 def open_grid(
-    path: str | Path,
+    path: str | Path | Sequence[str | Path],
     *,
     crs: str | None = None,
     accept: Iterable[str] = (),
@@ -31,8 +46,11 @@ def open_grid(
 
     Parameters
     ----------
-    path : str or Path
-        The file; its ending picks the reader.
+    path : str, Path, or a sequence of them
+        The file; its ending picks the reader. Of several files, in any order, each continues the
+        one before it in time. The first by date says all that does not change in time; the others
+        need hold no more than the dates and what changes. The first date of a file may repeat the
+        last of the one before, with the same values to 1e-6.
     crs : str, optional
         Coordinate system where the file names none, such as ``"EPSG:32631"``.
     accept : iterable of str
@@ -58,70 +76,48 @@ def open_grid(
     CannotDo
         If the grid is larger than the machine's memory.
     """
-    from subside.grid.checks import check_accept, run_checks
-    from subside.grid.findings import Findings
+    from subside.grid import opening
 
-    path = Path(path)
-    with located(str(path)):
-        words = check_accept(accept)
-    reader = _reader_of(path)
-    if fields is not None:
-        extra = initial_pressure.values() if isinstance(initial_pressure, Mapping) else ()
-        fields = [*fields, *extra]
-    options = {"crs": crs, "accept": tuple(sorted(words)), "fields": fields}
-    try:
-        cells = reader().read(path, options)
-        if initial_pressure is not None:
-            _set_initial(cells, initial_pressure)
-        run_checks(cells, surface, Findings(path, words))
-    except MemoryError:
-        raise CannotDo(f"{path}: the grid does not fit into the memory that is free; close other "
-                       "programs, or keep fewer steps or cells.") from None
-    return cells
+    return opening.open_grid(path, crs=crs, accept=accept, surface=surface,
+                             initial_pressure=initial_pressure, fields=fields)
 
 
-def _reader_of(path: Path) -> type[Any]:
-    from subside.hooks.registry import registry
+def open_cells(
+    path: str | Path | Sequence[str | Path],
+    *,
+    crs: str | None = None,
+    accept: Iterable[str] = (),
+    surface: float = 0.0,
+    initial_pressure: float | str | Mapping[str, str] | None = None,
+    fields: Iterable[str] | None = None,
+) -> tuple[xr.Dataset, dict[str, Stream]]:
+    """Read all of a pressure grid but what changes in time, and check it.
 
-    found = registry.all("reader").values()
-    fitting = [r for r in found if path.suffix.lower() in r.cls.suffixes]
-    if len(fitting) > 1:
-        raise InputError(f"{path}: files ending in '{path.suffix}' are claimed by several readers, "
-                         + ", ".join(f"{r.name} ({r.origin})" for r in fitting)
-                         + "; uninstall one of them.")
-    if not fitting:
-        endings = sorted({s for r in found for s in r.cls.suffixes})
-        raise InputError(f"{path}: no reader takes files ending in '{path.suffix}'; the installed "
-                         f"ones take {', '.join(endings)}.")
-    return fitting[0].cls
+    Parameters
+    ----------
+    path, crs, accept, surface, initial_pressure, fields
+        As in `open_grid`.
 
+    Returns
+    -------
+    cells : xarray.Dataset
+        As `open_grid` gives it, without `pressure` and other variables in time, but with their
+        dates as the coordinate `time`.
+    streams : dict of str to Stream
+        ``"pressure"`` and the other variables in time, to be read block by block.
 
-def _set_initial(cells: xr.Dataset, wanted: float | str | Mapping[str, str]) -> None:
-    import numpy as np
+    Raises
+    ------
+    InputError
+        If the file, a cell, or an argument is wrong. Pressures after the first date are not looked
+        at: that is what `PressureWatch` is for.
+    CannotDo
+        If the grid is larger than the machine's memory.
+    """
+    from subside.grid import opening
 
-    from subside.grid.fields import require_field
-    from subside.names import CELL_VARIABLES
-    from subside.units import parse_quantity
-
-    known = CELL_VARIABLES["initial_pressure"]
-    if isinstance(wanted, Mapping):
-        if set(wanted) != {"field"}:
-            raise InputError(f"{cells.attrs['source_file']}: initial_pressure = {dict(wanted)!r}: "
-                             "write \"first\", a quantity such as \"350 bar\", or "
-                             "{ field = \"initial_pressure\" }.")
-        name = wanted["field"]
-        values = require_field(cells, name, "Pa", "initial_pressure").values
-        if values.ndim != 1:
-            raise InputError(f"{cells.attrs['source_file']}: initial_pressure names the field "
-                             f"'{name}', which changes in time; it must be static.")
-    elif wanted == "first":
-        values = cells["pressure"].values[0].copy()
-    else:
-        with located(str(cells.attrs["source_file"])):
-            values = np.full(cells.sizes["cell"],
-                             parse_quantity(wanted, "Pa", name="initial_pressure"))
-    cells["initial_pressure"] = (known.dims, values,
-                                 {"units": known.unit, "long_name": known.long_name})
+    return opening.open_cells(path, crs=crs, accept=accept, surface=surface,
+                              initial_pressure=initial_pressure, fields=fields)
 
 
 def edge_depletion(cells: xr.Dataset, initial_pressure: Any = None) -> float:

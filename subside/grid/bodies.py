@@ -7,12 +7,16 @@ from collections.abc import Callable
 import numpy as np
 
 from subside.grid.crs import MapSystem
-from subside.grid.layout import BOX_VARIABLES, Layout
+from subside.grid.layout import BOX_VARIABLES
 from subside.grid.solids import BOX, Solids, judge_boxes, judge_corners
 from subside.grid.source import Source
+from subside.grid.static import Kept
+from subside.grid.threads import spread
 from subside.grid.words import place_in_file
 
-__all__ = ["read_boxes", "read_corners"]
+__all__ = ["box_values", "corner_values", "read_boxes", "read_corners"]
+
+_SIDES = {"dx", "dy"}
 
 
 def _horizontal_scale(source: Source, name: str, system: MapSystem) -> float:
@@ -27,64 +31,87 @@ def _horizontal_scale(source: Source, name: str, system: MapSystem) -> float:
     return factor
 
 
-def read_corners(source: Source, layout: Layout, keep: np.ndarray, system: MapSystem
-                 ) -> Solids:
-    """Hexahedra of the kept cells, read slab by slab; see `subside.grid.solids.judge_corners`."""
-    variable = source.variables["corners"]
-    factor, sense = _horizontal_scale(source, "corners", system), source.sense("corners")
-    origin = source.origin("corners", (2, 3))
-    corners = np.empty((int(np.count_nonzero(keep)), 8, 3))
-    done = 0
-    for start, stop in layout.slabs(variable):
-        part = keep[layout.cells_of(start, stop)]
-        values = source.values("corners", slice(start, stop)).reshape(-1, 8, 3)[part]
-        if values.size:
-            source.check_precision("corners", float(np.nanmax(np.abs(values), initial=0)), factor)
-        values += origin
-        values *= (factor, factor, factor * sense)
-        corners[done:done + len(values)] = values
-        done += len(values)
+def read_corners(kept: Kept, system: MapSystem) -> Solids:
+    """Hexahedra of the kept cells; see `subside.grid.solids.judge_corners`."""
+    source = kept.source
+    corners = corner_values(kept, system)
     ignored = [n for n in (*BOX_VARIABLES, "dx", "dy", "azimuth", "area") if n in source.variables]
     if ignored:
         source.findings.warnings.append("the geometry is taken from 'corners'; the file's "
                                         f"{', '.join(ignored)} are not used.")
-    return judge_corners(corners, _place(layout, keep), source.findings)
+    return judge_corners(corners, _place(kept), source.findings)
 
 
-def read_boxes(source: Source, layout: Layout, keep: np.ndarray, system: MapSystem) -> Solids:
+def corner_values(kept: Kept, system: MapSystem) -> np.ndarray:
+    """Corners (cell, 8, 3) of the kept cells, m, depth positive down, as they are."""
+    source = kept.source
+    factor, sense = _horizontal_scale(source, "corners", system), source.sense("corners")
+    origin = source.origin("corners", (2, 3))
+    values = kept.corners()
+    source.check_precision("corners", values, factor)
+    corners = values.astype(float, copy=False).reshape(-1, 8, 3)
+    scale = np.array([factor, factor, factor * sense])
+
+    def to_metres(start: int, stop: int) -> None:
+        part = corners[start:stop]
+        part += origin
+        part *= scale
+
+    if origin.any() or (scale != 1.0).any():
+        spread(to_metres, len(corners))
+    return corners
+
+
+def read_boxes(kept: Kept, system: MapSystem) -> Solids:
     """Boxes of the kept cells; see `subside.grid.solids.judge_boxes`."""
+    source = kept.source
+    box = box_values(kept, system)
+    if not source.variables.keys() >= _SIDES:
+        source.findings.warnings.append("cells have an area but no dx and dy; each is taken as a "
+                                        "square.")
+    return judge_boxes(box, _place(kept), source.findings)
+
+
+def box_values(kept: Kept, system: MapSystem) -> dict[str, np.ndarray]:
+    """`solids.BOX` of the kept cells, (cell,) each, m and degrees, depth positive down, as is."""
+    source = kept.source
     box = {}
-    for name in ("x", "y"):
-        factor = _horizontal_scale(source, name, system)
-        values = layout.full(source, name)[keep]
-        source.check_precision(name, float(np.nanmax(np.abs(values), initial=0)), factor)
-        box[name] = (values + source.origin(name, (1,))[0]) * factor
-    for name in ("top", "bottom"):
-        values = layout.full(source, name)[keep]
-        factor = source.unit(name, "m")[0]
-        source.check_precision(name, float(np.nanmax(np.abs(values), initial=0)), factor)
-        box[name] = (values + source.origin(name, (1,))[0]) * (factor * source.sense(name))
-    if "dx" in source.variables and "dy" in source.variables:
-        for name in ("dx", "dy"):
-            box[name] = layout.full(source, name)[keep] * source.unit(name, "m")[0]
+    for name in ("x", "y", "top", "bottom"):
+        upright = name in ("top", "bottom")
+        factor = source.unit(name, "m")[0] if upright else _horizontal_scale(source, name, system)
+        values = kept.values(name)
+        source.check_precision(name, values, factor)
+        box[name] = _scaled(values, factor * (source.sense(name) if upright else 1.0),
+                            float(source.origin(name, (1,))[0]))
+    if source.variables.keys() >= _SIDES:
+        for name in sorted(_SIDES):
+            box[name] = _scaled(kept.values(name), source.unit(name, "m")[0])
     else:
-        area = layout.full(source, "area")[keep] * source.unit("area", "m2")[0]
+        area = _scaled(kept.values("area"), source.unit("area", "m2")[0])
         negative = area <= 0
         if negative.any():
             first = int(np.flatnonzero(negative)[0])
             raise source.findings.error(
-                f"variable 'area' is {area[first]:g} m2 in {_place(layout, keep)(first)}; an area "
+                f"variable 'area' is {area[first]:g} m2 in {_place(kept)(first)}; an area "
                 "is positive: correct it or mark the cell inactive.")
-        box["dx"] = box["dy"] = np.sqrt(area)
-        source.findings.warnings.append("cells have an area but no dx and dy; each is taken as a "
-                                        "square.")
+        box["dx"] = np.sqrt(area)
+        box["dy"] = box["dx"].copy()
     if "azimuth" in source.variables:
-        box["azimuth"] = layout.full(source, "azimuth")[keep] * source.unit("azimuth", "degree")[0]
+        box["azimuth"] = _scaled(kept.values("azimuth"), source.unit("azimuth", "degree")[0])
     else:
         box["azimuth"] = np.zeros(len(box["x"]))
-    return judge_boxes({n: box[n] for n in BOX}, _place(layout, keep), source.findings)
+    return {n: box[n] for n in BOX}
 
 
-def _place(layout: Layout, keep: np.ndarray) -> Callable[[int], str]:
+def _scaled(values: np.ndarray, factor: float, origin: float = 0.0) -> np.ndarray:
+    """``(values + origin) * factor``, in place."""
+    if origin:
+        values += origin
+    if factor != 1.0:
+        values *= factor
+    return values
+
+
+def _place(kept: Kept) -> Callable[[int], str]:
     """Number of a judged cell to its place in the file."""
-    return lambda n: place_in_file(int(np.flatnonzero(keep)[n]), layout.shape)
+    return lambda n: place_in_file(int(kept.number[n]), kept.layout.shape)

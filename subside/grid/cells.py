@@ -8,13 +8,14 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from subside.grid.findings import Findings
+from subside.grid.pillars import pillars
 from subside.grid.solids import Solids
 from subside.names import CELL_VARIABLES
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["CellParts", "assemble", "on_edge"]
+__all__ = ["CellParts", "assemble", "attributes", "on_edge"]
 
 
 @dataclass
@@ -24,8 +25,6 @@ class CellParts:
     Attributes
     ----------
     time : array (nt,) of datetime64[ns]
-    pressure : array (nt, n)
-        Absolute, Pa.
     solids : Solids
         Bodies of the n cells.
     region : array (n,) of int
@@ -40,12 +39,11 @@ class CellParts:
         Name to `(dims, values, attrs)`.
     ids : dict of str to array (n,)
         ``k``, ``j``, ``i`` from 0, or ``cell_id``.
-    attrs, pressure_attrs : dict
-        Attributes of the dataset and of `pressure`.
+    attrs : dict
+        Attributes of the dataset.
     """
 
     time: np.ndarray
-    pressure: np.ndarray
     solids: Solids
     region: np.ndarray
     region_names: list[str]
@@ -56,27 +54,25 @@ class CellParts:
     fields: dict[str, tuple[tuple[str, ...], np.ndarray, dict[str, str]]] = field(
         default_factory=dict)
     attrs: dict[str, Any] = field(default_factory=dict)
-    pressure_attrs: dict[str, Any] = field(default_factory=dict)
 
 
 def assemble(parts: CellParts, findings: Findings) -> xr.Dataset:
-    """The cell dataset; its variables are those of `subside.names.CELL_VARIABLES`."""
+    """The cell dataset without its variables in time; see `subside.names.CELL_VARIABLES`."""
     import xarray as xr
 
     values: dict[str, np.ndarray] = {
-        "pressure": parts.pressure, **parts.solids.shape, "volume": parts.solids.volume,
+        **parts.solids.shape, "volume": parts.solids.volume,
         "centroid": parts.solids.centroid, "region": parts.region,
-        **{n: v.astype(np.int32) if n in "kji" else v for n, v in parts.ids.items()},
-        "edge": _edge(parts),
+        **{n: v.astype(np.int32, copy=False) if n in "kji" else v for n, v in parts.ids.items()},
+        "edge": _edge(parts), "column": _column(parts),
     }
     variables: dict[str, Any] = {}
     for name, array in values.items():
         known = CELL_VARIABLES.get(name)
         variables[name] = (("cell",), array) if known is None else (
-            known.dims, array, _attributes(name))
-    for name, (dims, array, attributes) in parts.fields.items():
-        variables[name] = (dims, array, {**_attributes(name), **attributes})
-    variables["pressure"][2].update(parts.pressure_attrs)
+            known.dims, array, attributes(name))
+    for name, (dims, array, own) in parts.fields.items():
+        variables[name] = (dims, array, {**attributes(name), **own})
     shape = parts.shape if len(parts.shape) == 3 else (1, 1, parts.shape[0])
     return xr.Dataset(
         variables,
@@ -87,12 +83,20 @@ def assemble(parts: CellParts, findings: Findings) -> xr.Dataset:
     )
 
 
-def _attributes(name: str) -> dict[str, Any]:
+def attributes(name: str) -> dict[str, Any]:
+    """Attributes of a variable of the cell dataset; none where it is no declared one."""
     known = CELL_VARIABLES.get(name)
     if known is None:
         return {}
-    attributes = {"units": known.unit, "long_name": known.long_name}
-    return attributes | ({"comment": known.comment} if known.comment else {})
+    found = {"units": known.unit, "long_name": known.long_name}
+    return found | ({"comment": known.comment} if known.comment else {})
+
+
+def _column(parts: CellParts) -> np.ndarray:
+    pillar = None
+    if len(parts.shape) == 3:
+        pillar = parts.ids["j"].astype(np.int64) * parts.shape[2] + parts.ids["i"]
+    return pillars(parts.solids.shape, pillar)
 
 
 def _edge(parts: CellParts) -> np.ndarray:

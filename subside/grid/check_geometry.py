@@ -6,7 +6,9 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from subside.grid.body_pass import depth_extremes, overlaps
 from subside.grid.findings import check
+from subside.grid.threads import spread
 from subside.grid.words import counted, place
 
 if TYPE_CHECKING:
@@ -19,15 +21,17 @@ _LOCAL = 10_000.0  # m
 def depth_range(cells: xr.Dataset) -> tuple[np.ndarray, np.ndarray]:
     """Shallowest and deepest depth (cell,) of each cell, m."""
     if "corners" in cells:
-        depth = cells["corners"].values[:, :, 2]
-        return depth.min(axis=1), depth.max(axis=1)
+        corners = cells["corners"].values
+        low, high = np.empty(len(corners)), np.empty(len(corners))
+        spread(lambda a, b: depth_extremes(corners, a, b, low, high), len(corners))
+        return low, high
     return cells["top"].values, cells["bottom"].values
 
 
 @check("elevation-as-depth", "error")
 def elevation_as_depth(cells: xr.Dataset, surface: float) -> str | None:
     """Most of the grid above the ground: elevations were declared as depths."""
-    median = float(np.median(cells["centroid"].values[:, 2]))
+    median = float(np.median(cells["centroid"].values[:, 2].copy(), overwrite_input=True))
     if median >= min(surface, 0.0):
         return None
     return (f"depths come out negative (median {median:.6g} m, the surface at {surface:g} m); "
@@ -52,36 +56,28 @@ def above_surface(cells: xr.Dataset, surface: float) -> str | None:
 @check("overlap", "error", acceptable=True)
 def overlap(cells: xr.Dataset, surface: float) -> str | None:
     """The bottom of a cell must not lie below the top of the active cell under it."""
-    below = _cell_below(cells)
-    if below is None:
-        return None
-    upper = np.flatnonzero(below >= 0)
-    lower = below[upper]
-    if "corners" in cells:
-        depth = cells["corners"].values[:, :, 2]
-        # float32 depths differ by rounding from one face to the next
-        amount = (depth[upper, 4:] - depth[lower, :4]).max(axis=1, initial=-np.inf)
-    else:
-        amount = cells["bottom"].values[upper] - cells["top"].values[lower]
-    wrong = np.flatnonzero(amount > _TOUCHING)
-    if not wrong.size:
-        return None
-    first = wrong[0]
-    return (f"{counted(wrong.size)} {'overlaps' if wrong.size == 1 else 'overlap'} the cell below, "
-            f"first {place(cells, int(upper[first]))}: its bottom lies {amount[first]:.6g} m below "
-            f"the top of {place(cells, int(lower[first]))}; rock counted twice sinks twice: "
-            "correct the layers.")
-
-
-def _cell_below(cells: xr.Dataset) -> np.ndarray | None:
-    """Number of the cell at k + 1 (cell,), -1 where there is none; None without layers."""
     shape = tuple(cells.attrs.get("shape", ()))
     if len(shape) != 3 or shape[0] < 2 or not all(n in cells for n in "kji"):
         return None
-    k, j, i = (cells[n].values for n in "kji")
-    number = np.full((shape[0] + 1, *shape[1:]), -1, dtype=np.int64)
-    number[k, j, i] = np.arange(len(k))
-    return number[k + 1, j, i]
+    names = [*"kji", *(["corners"] if "corners" in cells else ["top", "bottom"])]
+    held = {n: cells[n].values for n in names}
+    order = None
+    if (held["k"][1:] < held["k"][:-1]).any():  # a reader of another kind
+        order = np.argsort(held["k"], kind="stable")
+        held = {n: v[order] for n, v in held.items()}
+    none = np.empty(0)
+    # float32 depths differ by rounding from one face to the next
+    count, upper, lower, amount = overlaps(
+        held["k"], held["j"], held["i"], *shape[1:], held.get("top", none),
+        held.get("bottom", none), held.get("corners", none.reshape(0, 8, 3)), _TOUCHING)
+    if not count:
+        return None
+    if order is not None:
+        upper, lower = order[upper], order[lower]
+    return (f"{counted(count)} {'overlaps' if count == 1 else 'overlap'} the cell below, "
+            f"first {place(cells, int(upper))}: its bottom lies {amount:.6g} m below "
+            f"the top of {place(cells, int(lower))}; rock counted twice sinks twice: "
+            "correct the layers.")
 
 
 @check("local-coordinates", "warning")

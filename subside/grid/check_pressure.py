@@ -1,14 +1,13 @@
-"""Checks of the pressure history and the fractions, step by step: no large temporaries."""
+"""Checks of pressures at the start and of fractions; those in time are made by `watch`."""
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from subside.grid.findings import check
-from subside.grid.words import counted, place, pressure_text, step_text
+from subside.grid.findings import Findings, check, declare
+from subside.grid.words import counted, place, pressure_text
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -17,88 +16,78 @@ LITHOSTATIC = 22.7e3  # Pa/m, weight of a heavy overburden; common practice, no 
 SEA_WATER = 1025.0 * 9.81  # Pa/m; common practice, no source
 HYDROSTATIC = 9.81e3  # Pa/m, fresh water
 ATMOSPHERE = 1.013e5  # Pa
-_JUMP = 100e5  # Pa
+JUMP = 100e5  # Pa
+_PART = 1 << 20  # cells at a time: no temporaries of the size of a grid
+
+GAP = declare("pressure-gap", "error")
+NOT_POSITIVE = declare("pressure-not-positive", "error", acceptable=True)
+TOO_HIGH = declare("lithostatic", "error", acceptable=True)
+ODD = declare("hydrostatic", "warning")
+JUMPS = declare("pressure-jump", "warning")
+IDENTICAL = declare("identical-steps", "warning")
 
 
-def _histories(cells: xr.Dataset) -> Iterator[tuple[str, np.ndarray]]:
-    """Each pressure (cell,) with the words for it: every step, and the initial one if given."""
-    time, pressure = cells["time"].values, cells["pressure"].values
-    if "initial_pressure" in cells:
-        yield "initial_pressure", cells["initial_pressure"].values
-    for n in range(len(time)):
-        yield step_text(time, n), pressure[n]
+def lithostatic_limit(depth: np.ndarray, surface: float) -> np.ndarray:
+    """Weight of the rock above cells, 22.7 kPa/m, and of the sea above that: (cell,), Pa.
 
-
-@check("pressure-not-positive", "error", acceptable=True)
-def pressure_not_positive(cells: xr.Dataset, surface: float) -> str | None:
-    """Absolute pressure is above zero."""
-    for step, pressure in _histories(cells):
-        wrong = np.flatnonzero(pressure <= 0)
-        if wrong.size:
-            first = int(wrong[0])
-            return (f"{step}: {counted(wrong.size)} {_has(wrong)} a pressure <= 0, first "
-                    f"{place(cells, first)}, {_pressure(cells, pressure[first])}; zero often "
-                    "marks inactive cells: mark them in 'active' or as missing values.")
-    return None
-
-
-@check("lithostatic", "error", acceptable=True)
-def lithostatic(cells: xr.Dataset, surface: float) -> str | None:
-    """Pore pressure stays below the weight of the rock, 22.7 kPa/m, and of the sea above it."""
-    depth = cells["centroid"].values[:, 2]
+    `depth` is of their centres in the grid's vertical datum, m.
+    """
     # The water above a seabed weighs too. Under 2000 m of it the rock alone would allow 22.7 kPa/m
     # x 1000 m = 22.7 MPa at a depth of 3000 m, where plain hydrostatic is 9.81 kPa/m x 3000 m =
     # 29.4 MPa already.
-    water = SEA_WATER * max(surface, 0.0)
-    limit = LITHOSTATIC * (depth - surface) + water
-    for step, pressure in _histories(cells):
-        wrong = np.flatnonzero(pressure > limit)
+    return LITHOSTATIC * (depth - surface) + SEA_WATER * max(surface, 0.0)
+
+
+def check_start(cells: xr.Dataset, surface: float, first: np.ndarray, attributes: Any,
+                findings: Findings) -> None:
+    """Check the initial pressure, where there is one, and the pressure (cell,) of the first date.
+
+    Parameters
+    ----------
+    first : array (cell,)
+        Pa; overwritten.
+    attributes : mapping
+        Of the variable `pressure`.
+    """
+    if "initial_pressure" in cells:
+        initial = cells["initial_pressure"].values
+        step = "initial_pressure"
+        wrong = np.flatnonzero(initial <= 0)
         if wrong.size:
-            first = int(wrong[0])
-            sea = f" plus {water / 1e5:.6g} bar of sea water above it" if surface > 0 else ""
-            return (f"{step}: {counted(wrong.size)} {_has(wrong)} a pressure above lithostatic, "
-                    f"first {place(cells, first)}: {_pressure(cells, pressure[first])} at "
-                    f"a depth of {depth[first]:.6g} m (limit {limit[first] / 1e5:.6g} bar, 22.7 "
-                    f"kPa/m below the surface{sea}); check the units of pressure and depth.")
-    return None
+            findings.add(NOT_POSITIVE, not_positive_text(
+                cells, step, wrong.size, int(wrong[0]), initial[wrong[0]], attributes))
+        wrong = np.flatnonzero(initial > lithostatic_limit(cells["centroid"].values[:, 2], surface))
+        if wrong.size:
+            findings.add(TOO_HIGH, lithostatic_text(
+                cells, surface, step, wrong.size, int(wrong[0]), initial[wrong[0]], attributes))
+    depth = cells["centroid"].values[:, 2]
+    for start in range(0, len(first), _PART):
+        part = slice(start, start + _PART)
+        first[part] /= ATMOSPHERE + HYDROSTATIC * np.maximum(depth[part] - surface, 0.0)
+    ratio = float(np.median(first, overwrite_input=True))
+    if not 0.3 <= ratio <= 3.0:  # in most fields
+        findings.add(ODD, f"the first step's pressure is {ratio:.3g} times hydrostatic (median "
+                     "over cells); check the units of pressure (psi?) and depth (m?).")
 
 
-@check("hydrostatic", "warning")
-def hydrostatic(cells: xr.Dataset, surface: float) -> str | None:
-    """The first step is between 0.3 and 3 times hydrostatic in most fields."""
-    depth = cells["centroid"].values[:, 2] - surface
-    water = ATMOSPHERE + HYDROSTATIC * np.maximum(depth, 0.0)
-    ratio = float(np.median(cells["pressure"].values[0] / water))
-    if 0.3 <= ratio <= 3.0:
-        return None
-    return (f"the first step's pressure is {ratio:.3g} times hydrostatic (median over cells); "
-            "check the units of pressure (psi?) and depth (m?).")
+def not_positive_text(cells: xr.Dataset, step: str, count: int, cell: int, value: float,
+                      attributes: Any) -> str:
+    """What to say of `count` pressures that are not above zero, the first in `cell`."""
+    return (f"{step}: {counted(count)} {_has(count)} a pressure <= 0, first {place(cells, cell)}, "
+            f"{pressure_text(float(value), attributes)}; zero often marks inactive cells: mark "
+            "them in 'active' or as missing values.")
 
 
-@check("pressure-jump", "warning")
-def pressure_jump(cells: xr.Dataset, surface: float) -> str | None:
-    """More than 100 bar in one step is rare."""
-    time, pressure = cells["time"].values, cells["pressure"].values
-    largest, text = _JUMP, None
-    for n in range(1, len(time)):
-        change = np.abs(pressure[n] - pressure[n - 1])
-        cell = int(np.argmax(change))
-        if change[cell] > largest:
-            largest = float(change[cell])
-            text = (f"{step_text(time, n)}: pressure changes by {largest / 1e5:.4g} bar in one "
-                    f"step in {place(cells, cell)}, the largest of all steps; is a step missing?")
-    return text
-
-
-@check("identical-steps", "warning")
-def identical_steps(cells: xr.Dataset, surface: float) -> str | None:
-    """Two equal steps in a row are often a copy by mistake."""
-    time, pressure = cells["time"].values, cells["pressure"].values
-    same = [n for n in range(1, len(time)) if np.array_equal(pressure[n], pressure[n - 1])]
-    if not same:
-        return None
-    more = f" (and {len(same) - 1} more such steps)" if len(same) > 1 else ""
-    return f"{step_text(time, same[0])} is identical to step {same[0] - 1}{more}."
+def lithostatic_text(cells: xr.Dataset, surface: float, step: str, count: int, cell: int,
+                     value: float, attributes: Any) -> str:
+    """What to say of `count` pressures above the weight of the rock, the first in `cell`."""
+    limit = lithostatic_limit(cells["centroid"].values[:, 2], surface)[cell]
+    water = SEA_WATER * max(surface, 0.0)
+    sea = f" plus {water / 1e5:.6g} bar of sea water above it" if surface > 0 else ""
+    return (f"{step}: {counted(count)} {_has(count)} a pressure above lithostatic, first "
+            f"{place(cells, cell)}: {pressure_text(float(value), attributes)} at a depth of "
+            f"{cells['centroid'].values[cell, 2]:.6g} m (limit {limit / 1e5:.6g} bar, 22.7 kPa/m "
+            f"below the surface{sea}); check the units of pressure and depth.")
 
 
 @check("porosity", "error", acceptable=True)
@@ -126,9 +115,5 @@ def _fraction(cells: xr.Dataset, name: str) -> str | None:
             f"{counted(wrong.size)}; it is a fraction{percent}.")
 
 
-def _has(wrong: np.ndarray) -> str:
-    return "has" if wrong.size == 1 else "have"
-
-
-def _pressure(cells: xr.Dataset, value: float) -> str:
-    return pressure_text(float(value), cells["pressure"].attrs)
+def _has(count: int) -> str:
+    return "has" if count == 1 else "have"

@@ -16,7 +16,11 @@ if TYPE_CHECKING:
 @check("time-order", "error")
 def time_order(cells: xr.Dataset, surface: float) -> str | None:
     """Dates must not run backwards."""
-    time = cells["time"].values
+    return backwards(cells["time"].values)
+
+
+def backwards(time: np.ndarray) -> str | None:
+    """What to say of dates (nt,) that run backwards."""
     back = np.flatnonzero(np.diff(time) < np.timedelta64(0))
     if not back.size:
         return None
@@ -28,7 +32,11 @@ def time_order(cells: xr.Dataset, surface: float) -> str | None:
 @check("duplicate-times", "error")
 def duplicate_times(cells: xr.Dataset, surface: float) -> str | None:
     """A date must not come twice."""
-    time = cells["time"].values
+    return repeated(cells["time"].values)
+
+
+def repeated(time: np.ndarray) -> str | None:
+    """What to say of dates (nt,) that come twice."""
     same = np.flatnonzero(np.diff(time) == np.timedelta64(0))
     if not same.size:
         return None

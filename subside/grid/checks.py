@@ -2,7 +2,8 @@
 
 Those made while a file is read (units, `positive`, missing corners, volumes, pressure gaps) are
 declared in `solids` and `netcdf`; those that look at the cell dataset, whatever reader made it,
-live in `check_time`, `check_geometry` and `check_pressure`.
+live in `check_time`, `check_geometry` and `check_pressure`; those of the pressure history are made
+in `watch` while it is read.
 """
 
 from __future__ import annotations
@@ -20,9 +21,11 @@ from subside.names import CELL_VARIABLES
 if TYPE_CHECKING:
     import xarray as xr
 
+    from subside.grid.stream import Stream
+
 __all__ = ["CHECKS", "Check", "Findings", "acceptable_checks", "check_accept", "run_checks"]
 
-_NEEDED = ("pressure", "volume", "centroid", "region", "edge")
+_NEEDED = ("volume", "centroid", "region", "edge")
 
 
 def acceptable_checks() -> list[str]:
@@ -51,30 +54,34 @@ def check_accept(accept: Iterable[str]) -> frozenset[str]:
     return words
 
 
-def run_checks(cells: xr.Dataset, surface: float, findings: Findings) -> None:
+def run_checks(cells: xr.Dataset, surface: float, findings: Findings, pressure: Stream) -> None:
     """Run the checks on a cell dataset; warnings are added to ``cells.attrs["warnings"]``.
 
     Parameters
     ----------
     surface : float
         Depth of the ground or seabed in the grid's vertical datum, m.
+    pressure : Stream
+        Looked at on its first date only; `subside.grid.watch` sees the rest.
 
     Raises
     ------
     InputError
         At the first error that is not accepted.
     """
-    _refuse_incomplete(cells, findings)
+    refuse_incomplete(cells, findings)
     findings.run(cells, surface)
+    check_pressure.check_start(cells, surface, pressure.start_si(), pressure.attrs, findings)
     known = list(cells.attrs.get("warnings", []))
     cells.attrs["warnings"] = known + [w for w in findings.warnings if w not in known]
 
 
-def _refuse_incomplete(cells: xr.Dataset, findings: Findings) -> None:
+def refuse_incomplete(cells: xr.Dataset, findings: Findings,
+                      needed: tuple[str, ...] = _NEEDED) -> None:
     """A reader that came as a plug-in may have forgotten something."""
     shape = ("corners",) if "corners" in cells else ("x", "y", "top", "bottom", "dx", "dy",
                                                      "azimuth")
-    for name in (*_NEEDED, *shape):
+    for name in (*needed, *shape):
         wanted = CELL_VARIABLES[name].dims
         if name not in cells or cells[name].dims != wanted:
             found = f"dimensions {cells[name].dims}" if name in cells else "nothing"

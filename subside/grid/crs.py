@@ -8,7 +8,7 @@ from typing import Any
 
 from subside.grid.findings import Findings
 
-__all__ = ["MapSystem", "map_system"]
+__all__ = ["MapSystem", "map_system", "same_system"]
 
 
 @dataclass(frozen=True)
@@ -111,6 +111,13 @@ def _same(first: Any, second: Any) -> bool:
     code = first.to_json_dict().get("id")
     return bool(first.equals(second, ignore_axis_order=True)
                 or (code is not None and code == second.to_json_dict().get("id")))
+
+
+def same_system(first: MapSystem, second: MapSystem) -> bool:
+    """Whether two files have one coordinate system, though they may write it differently."""
+    from pyproj import CRS
+
+    return first.wkt == second.wkt or _same(CRS.from_wkt(first.wkt), CRS.from_wkt(second.wkt))
 
 
 def _label(crs: Any) -> str:

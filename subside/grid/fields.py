@@ -9,16 +9,16 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from subside.errors import InputError, nearest
-from subside.grid.history import read_history
 from subside.grid.layout import GEOMETRY, Layout
 from subside.grid.source import Source
+from subside.grid.static import Kept
 from subside.grid.words import counted, place
 from subside.units import same_dimension, scale_to_si
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["DECLARED", "field_names", "read_field", "require_field", "si_unit_of"]
+__all__ = ["DECLARED", "field_names", "field_scale", "read_field", "require_field", "si_unit_of"]
 
 DECLARED = {"porosity": "1", "net_to_gross": "1", "initial_pressure": "Pa"}
 """Fields whose meaning is fixed: static, and their units are needed at once."""
@@ -60,9 +60,8 @@ def si_unit_of(unit: str) -> str:
                      f"{', '.join(_SI_UNITS)}.")
 
 
-def read_field(source: Source, name: str, layout: Layout, keep: np.ndarray
-               ) -> tuple[tuple[str, ...], np.ndarray, dict[str, str]]:
-    """`(dims, values, attrs)` of a field on the kept cells, in SI.
+def field_scale(source: Source, name: str) -> tuple[tuple[float, float], dict[str, str]]:
+    """`(factor, offset)` to SI of a field, and its attributes.
 
     A further field without units, or with units nobody knows, keeps its numbers and has no
     ``units``; ``units_problem`` then says why, for `require_field`.
@@ -87,12 +86,16 @@ def read_field(source: Source, name: str, layout: Layout, keep: np.ndarray
                 attributes["units_problem"] = f"it has units '{in_file}': {error}"
     if unit:
         attributes["units"] = unit
-    if "time" in source.variables[name].dimensions:
-        if name in DECLARED:
-            raise source.findings.error(f"variable '{name}' changes in time; it must be static, "
-                                        f"({', '.join(layout.dims)}).")
-        return ("time", "cell"), read_history(source, name, layout, keep, scale), attributes
-    return ("cell",), layout.full(source, name)[keep] * scale[0] + scale[1], attributes
+    return scale, attributes
+
+
+def read_field(kept: Kept, name: str) -> tuple[tuple[str, ...], np.ndarray, dict[str, str]]:
+    """`(dims, values, attrs)` of a static field on the kept cells, in SI; see `field_scale`."""
+    (factor, offset), attributes = field_scale(kept.source, name)
+    values = kept.values(name)
+    values *= factor
+    values += offset
+    return ("cell",), values, attributes
 
 
 def require_field(cells: xr.Dataset, name: str, si_unit: str, asked_by: str) -> xr.DataArray:

@@ -76,22 +76,26 @@ class Findings:
         self.accept = frozenset([accept] if isinstance(accept, str) else accept)
         self.warnings: list[str] = []
 
-    def error(self, text: str) -> InputError:
+    def error(self, text: str, file: Path | None = None) -> InputError:
         """The error of that text, naming the file; for what is not a check but a broken file."""
-        return InputError(f"{self.path}: {text}")
+        return InputError(f"{file or self.path}: {text}")
 
-    def add(self, name: str, text: str) -> None:
-        """Take what the check `name` found: keep it as a warning or raise it."""
+    def add(self, name: str, text: str, file: Path | None = None) -> None:
+        """Take what the check `name` found: keep it as a warning or raise it.
+
+        `file` is the one of several that it was found in.
+        """
         found = CHECKS[name]
+        warning = text if file is None else f"{file.name}: {text}"
         if found.severity == "warning":
-            self.warnings.append(text)
+            self.warnings.append(warning)
         elif name in self.accept:
-            self.warnings.append(f"accepted ({name}): {text}")
+            self.warnings.append(f"accepted ({name}): {warning}")
         elif found.acceptable:
             raise self.error(f"{text} If it is meant so, write accept = [\"{name}\"] under "
-                             "[[grid]].")
+                             "[[grid]].", file)
         else:
-            raise self.error(text)
+            raise self.error(text, file)
 
     def run(self, cells: Any, surface: float) -> None:
         """Run every check that looks at the cell dataset."""

@@ -13,7 +13,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-__all__ = ["CORNER_PLACES", "Hexahedra", "corners_of_boxes", "hexahedra", "mirrored"]
+from subside.grid.body_pass import measure
+from subside.grid.threads import spread
+
+__all__ = ["ABSURD", "CORNER_PLACES", "Hexahedra", "corners_of_boxes", "hexahedra", "mirrored"]
 
 CORNER_PLACES = np.array([
     [0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0],
@@ -21,7 +24,7 @@ CORNER_PLACES = np.array([
 ], dtype=float)
 """(s, t, u) of the eight corners."""
 
-_BLOCK = 16384  # cells at a time: some 20 MB of temporaries
+ABSURD = 1e8  # m: no map reaches so far
 # A bed thinner than 1e-7 of its width holds nothing; the second part is the noise of coordinates.
 _THIN, _NOISE = 1e-7, 1e-10
 
@@ -43,6 +46,10 @@ class Hexahedra:
         No volume but for rounding (a bed thinner than 1e-7 of its width).
     scale : array (n,)
         Largest extent of a cell, cubed, m3: what a Jacobian is compared with.
+    drop : array (n,)
+        Depths of the bottom corners minus depths of the top corners, summed, m.
+    missing : array (n,) of bool
+        A corner has no coordinate, or one beyond 1e8 m; the other measures then mean nothing.
     """
 
     volume: np.ndarray
@@ -50,34 +57,8 @@ class Hexahedra:
     least_jacobian: np.ndarray
     zero: np.ndarray
     scale: np.ndarray
-
-
-def _shape_functions(places: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Values (p, 8) and derivatives (p, 3, 8) of the N_c at places (p, 3)."""
-    at = places[:, None, :]
-    factor = np.where(CORNER_PLACES > 0, at, 1.0 - at)  # (p, 8, 3)
-    slope = 2.0 * CORNER_PLACES - 1.0
-    derivative = np.empty((len(places), 3, 8))
-    for axis in range(3):
-        others = [n for n in range(3) if n != axis]
-        derivative[:, axis] = slope[:, axis] * factor[..., others].prod(-1)
-    return factor.prod(-1), derivative
-
-
-_GAUSS = 0.5 + (CORNER_PLACES - 0.5) / np.sqrt(3.0)
-_GAUSS_VALUE, _GAUSS_SLOPE = _shape_functions(_GAUSS)
-_CORNER_SLOPE = _shape_functions(CORNER_PLACES)[1]
-
-
-def _determinants(corners: np.ndarray, slope: np.ndarray) -> np.ndarray:
-    """det(dX/d(s, t, u)) of hexahedra (n, 8, 3) at the places of `slope`: (n, p)."""
-    edge = np.matmul(slope.reshape(-1, 8), corners).reshape(len(corners), -1, 3, 3)
-    a, b, c = edge[..., 0, :], edge[..., 1, :], edge[..., 2, :]
-    return (
-        a[..., 0] * (b[..., 1] * c[..., 2] - b[..., 2] * c[..., 1])
-        - a[..., 1] * (b[..., 0] * c[..., 2] - b[..., 2] * c[..., 0])
-        + a[..., 2] * (b[..., 0] * c[..., 1] - b[..., 1] * c[..., 0])
-    )
+    drop: np.ndarray
+    missing: np.ndarray
 
 
 def hexahedra(corners: np.ndarray) -> Hexahedra:
@@ -91,39 +72,19 @@ def hexahedra(corners: np.ndarray) -> Hexahedra:
     Returns
     -------
     Hexahedra
-        Exact but for rounding; computed in blocks, so temporaries stay small.
+        Exact but for rounding.
     """
     n = len(corners)
-    result = Hexahedra(np.empty(n), np.empty((n, 3)), np.empty(n), np.empty(n, bool), np.empty(n))
-    for start in range(0, n, _BLOCK):
-        part = slice(start, start + _BLOCK)
-        _measure(corners[part], result, part)
-    return result
+    corners = np.ascontiguousarray(corners, dtype=float)
+    found = Hexahedra(np.empty(n), np.empty((n, 3)), np.empty(n), np.empty(n, bool), np.empty(n),
+                      np.empty(n), np.empty(n, bool))
 
+    def part(start: int, stop: int) -> None:
+        measure(corners, _THIN, _NOISE, ABSURD, start, stop, found.volume, found.centroid,
+                found.least_jacobian, found.zero, found.scale, found.drop, found.missing)
 
-def _measure(corners: np.ndarray, result: Hexahedra, part: slice) -> None:
-    # Relative to the middle of the cell: northings of 6e6 m would cost seven digits.
-    middle = corners.mean(axis=1)
-    local = corners - middle[:, None, :]
-    weight = _determinants(local, _GAUSS_SLOPE) / 8.0
-    volume = weight.sum(axis=1)
-    moment = np.matmul(weight[:, None, :], np.matmul(_GAUSS_VALUE, local))[:, 0, :]
-
-    across, down = local[:, 2] - local[:, 0], local[:, 3] - local[:, 1]
-    lower_across, lower_down = local[:, 6] - local[:, 4], local[:, 7] - local[:, 5]
-    area = 0.25 * np.abs(across[:, 0] * down[:, 1] - across[:, 1] * down[:, 0]
-                         + lower_across[:, 0] * lower_down[:, 1]
-                         - lower_across[:, 1] * lower_down[:, 0])
-    scale = np.ptp(local, axis=1).max(axis=1) ** 3
-
-    zero = np.abs(volume) <= _THIN * area**1.5 + _NOISE * scale
-    safe = np.where(zero, 1.0, volume)
-    result.volume[part] = volume
-    result.centroid[part] = middle + np.where(zero[:, None], 0.0, moment / safe[:, None])
-    jacobian = _determinants(local, _CORNER_SLOPE) * np.where(volume < 0, -1.0, 1.0)[:, None]
-    result.least_jacobian[part] = jacobian.min(axis=1)
-    result.zero[part] = zero
-    result.scale[part] = scale
+    spread(part, n, least=20_000)
+    return found
 
 
 def mirrored(corners: np.ndarray) -> np.ndarray:

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NoReturn
 
 import numpy as np
 
 from subside.grid.source import Source
 
-__all__ = ["BOX_VARIABLES", "GEOMETRY", "Layout", "chunk_along", "find_layout"]
+__all__ = ["BOX_VARIABLES", "GEOMETRY", "Layout", "chunk_along", "find_layout", "has_geometry"]
 
 BOX_VARIABLES = ("x", "y", "top", "bottom")
 GEOMETRY = frozenset({"corners", *BOX_VARIABLES, "dx", "dy", "azimuth", "area"})
@@ -68,17 +68,20 @@ class Layout:
         row = self.size // self.shape[0]
         return slice(start * row, stop * row)
 
-    def full(self, source: Source, name: str) -> np.ndarray:
-        """A variable on the cells, or on some of their dimensions, as flat values of every cell."""
-        dims = source.variables[name].dimensions
+    def dims_of(self, source: Source, name: str) -> tuple[str, ...]:
+        """Dimensions of a variable on the cells, or on some of their dimensions."""
+        dims: tuple[str, ...] = source.variables[name].dimensions
         if tuple(d for d in self.dims if d in dims) != dims:
             raise source.findings.error(
                 f"variable '{name}' has dimensions {_shown(source, name)}; expected "
                 f"({', '.join(self.dims)})"
                 + (", or (j, i) for what is the same in every layer." if self.structured else "."))
-        values = source.values(name)
-        places = tuple(slice(None) if d in dims else None for d in self.dims)
-        return np.broadcast_to(values[places], self.shape).reshape(-1)
+        return dims
+
+    @property
+    def box(self) -> tuple[int, int, int]:
+        """The shape as (k, j, i); a cell table is one row."""
+        return self.shape if len(self.shape) == 3 else (1, 1, self.shape[0])
 
 
 def chunk_along(variable: Any, dimension: str) -> int:
@@ -95,8 +98,11 @@ def _shown(source: Source, name: str) -> str:
                            zip(variable.dimensions, variable.shape, strict=True)) + ")"
 
 
-def find_layout(source: Source) -> Layout:
-    """The layout of the file, from the dimensions of `pressure` and what geometry there is."""
+def find_layout(source: Source, geometry: bool = True) -> Layout:
+    """The layout of the file, from the dimensions of `pressure` and what geometry there is.
+
+    Without `geometry` there need be none.
+    """
     error = source.findings.error
     pressure = source.need("pressure", "pore pressure of every cell at every date; dimensions "
                            "(time, k, j, i) or (time, cell)")
@@ -109,6 +115,8 @@ def find_layout(source: Source) -> Layout:
                     "least one step and one cell.")
     cell_dims, shape = dims[1:], tuple(int(n) for n in pressure.shape[1:])
     has_corners = "corners" in source.variables
+    if not geometry:
+        return Layout(cell_dims, shape, int(pressure.shape[0]), has_corners)
     if has_corners:
         wanted, expected = (*cell_dims, "corner", "xyz"), (*shape, 8, 3)
         corners = source.variables["corners"]
@@ -117,17 +125,26 @@ def find_layout(source: Source) -> Layout:
                         f"pressure has {_shown(source, 'pressure')}; expected corners of "
                         f"({', '.join(f'{d}={n}' for d, n in zip(wanted, expected, strict=True))})"
                         ".")
-    else:
-        _need_boxes(source)
+    elif _missing(source):
+        _refuse_missing(source)
     return Layout(cell_dims, shape, int(pressure.shape[0]), has_corners)
 
 
-def _need_boxes(source: Source) -> None:
+def has_geometry(source: Source) -> bool:
+    """Whether the file says where its cells are."""
+    return "corners" in source.variables or not _missing(source)
+
+
+def _missing(source: Source) -> list[str]:
+    """Variables that boxes would need and the file does not have."""
     missing = [n for n in BOX_VARIABLES if n not in source.variables]
     if "area" not in source.variables:
         missing += [n for n in ("dx", "dy") if n not in source.variables]
-    if missing:
-        raise source.findings.error(
-            f"the file has no geometry: neither 'corners' nor the box variable(s) "
-            f"{', '.join(repr(n) for n in missing)}; write corners(k, j, i, corner, xyz), or x, y, "
-            "top, bottom with dx, dy (or area). " + source.contents("corners"))
+    return missing
+
+
+def _refuse_missing(source: Source) -> NoReturn:
+    raise source.findings.error(
+        f"the file has no geometry: neither 'corners' nor the box variable(s) "
+        f"{', '.join(repr(n) for n in _missing(source))}; write corners(k, j, i, corner, xyz), or "
+        "x, y, top, bottom with dx, dy (or area). " + source.contents("corners"))

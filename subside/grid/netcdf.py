@@ -2,36 +2,39 @@
 
 from __future__ import annotations
 
-import os
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, ClassVar
 
 import numpy as np
 
-from subside.errors import CannotDo
 from subside.grid.bodies import read_boxes, read_corners
-from subside.grid.cells import CellParts, assemble
+from subside.grid.cell_pass import places
+from subside.grid.cells import CellParts, assemble, attributes
 from subside.grid.crs import MapSystem, map_system
 from subside.grid.dates import decode_dates
-from subside.grid.fields import field_names, read_field
+from subside.grid.fields import DECLARED, field_names, field_scale, read_field
 from subside.grid.findings import Findings, declare
-from subside.grid.history import Gaps, read_history
 from subside.grid.layout import Layout, find_layout
+from subside.grid.memory import refuse_giants
 from subside.grid.regions import read_regions
+from subside.grid.selection import make_blocks
 from subside.grid.source import Source, open_source
-from subside.grid.words import counted, place_in_file, step_text
+from subside.grid.static import Kept
+from subside.grid.storage import first_date, open_store
+from subside.grid.stream import FileStream, Stream
+from subside.grid.unpack import ABSENT
+from subside.grid.words import counted
 from subside.hooks.contracts import Reader
 
 if TYPE_CHECKING:
     import xarray as xr
 
-__all__ = ["NetcdfGrid"]
+__all__ = ["NetcdfGrid", "dates_of", "map_system_of", "scale_in_time", "whole"]
 
 GAUGE = declare("gauge", "warning")
 DATUM = declare("vertical-datum", "warning")
 IDLE_PRESSURE = declare("inactive-pressure", "warning")
-GAP = declare("pressure-gap", "error")
 NOTHING = declare("no-active-cell", "error")
 
 
@@ -43,8 +46,9 @@ class NetcdfGrid(Reader):
     source = "NetCDF (Unidata); attributes by the CF conventions 1.11"
     suffixes: ClassVar[tuple[str, ...]] = (".nc", ".nc4", ".cdf", ".netcdf")
 
-    def read(self, path: Path, options: Mapping[str, Any]) -> xr.Dataset:
-        """The cell dataset of a file.
+    def open(self, path: Path, options: Mapping[str, Any]
+             ) -> tuple[xr.Dataset, dict[str, FileStream]]:
+        """The cell dataset of a file without its variables in time, and these to be read.
 
         Parameters
         ----------
@@ -62,71 +66,92 @@ class NetcdfGrid(Reader):
         """
         findings = Findings(path, options.get("accept", ()))
         with open_source(path, findings) as source:
-            return _read(source, options, findings)
+            return whole(source, options, findings)
+
+    def open_several(self, paths: Sequence[Path], options: Mapping[str, Any]
+                     ) -> tuple[xr.Dataset, Mapping[str, Stream]]:
+        """As `open`, of files that continue each other in time; see `subside.grid.continuation`."""
+        from subside.grid.continuation import open_several
+
+        return open_several(paths, options)
+
+    def read(self, path: Path, options: Mapping[str, Any]) -> xr.Dataset:
+        """The whole cell dataset, as `open` but with everything in memory."""
+        from subside.grid.opening import in_memory
+
+        return in_memory(*self.open(path, options))
 
 
-def _read(source: Source, options: Mapping[str, Any], findings: Findings) -> xr.Dataset:
+def whole(source: Source, options: Mapping[str, Any], findings: Findings
+          ) -> tuple[xr.Dataset, dict[str, FileStream]]:
+    """See `NetcdfGrid.open`."""
     layout = find_layout(source)
     names = field_names(source, layout, options.get("fields"))
-    _refuse_giants(source, layout, names)
-    pressure_scale = _pressure_scale(source)
-    time = _dates(source, layout)
-    system = _map_system(source, options.get("crs"))
+    in_time = [n for n in names if "time" in source.variables[n].dimensions]
+    refuse_giants(findings, layout.size, 8 * (24 if layout.has_corners else 7) + 60
+                  + 8 * (len(names) - len(in_time)), f" and {layout.steps} steps")
+    scales = {n: scale_in_time(source, n, layout) for n in ("pressure", *in_time)}
+    time = dates_of(source)
+    system = map_system_of(source, options.get("crs"))
 
     # 1. which cells count
     enabled = _enabled(source, layout)
-    has_pressure = np.isfinite(source.values("pressure", 0)).reshape(-1)
-    idle = int(np.count_nonzero(has_pressure & ~enabled))
+    store = open_store(source, "pressure", layout)
+    start = first_date(store, layout)
+    state = np.isfinite(start).view(np.uint8)
+    idle = int(np.count_nonzero(state[~enabled]))
     if idle:
         findings.add(IDLE_PRESSURE, f"{counted(idle, 'inactive cell')} "
                      f"{'carries' if idle == 1 else 'carry'} a pressure; it is ignored.")
-    keep = enabled & has_pressure
-    _refuse_empty(keep, enabled, layout, findings)
+    without = enabled & (state == 0)
+    state[~enabled] = 0  # neither KEPT nor ABSENT
+    state[without] = ABSENT
+    state = state.reshape(layout.box)
+    kept = Kept.of(source, layout, state)
+    _refuse_empty(kept, enabled, findings)
 
     # 2. their bodies; what has no volume drops out
-    judged = np.flatnonzero(keep)
-    solids = (read_corners if layout.has_corners else read_boxes)(source, layout, keep, system)
-    kept = judged[solids.solid]
-    keep[judged[~solids.solid]] = False
-    _refuse_empty(keep, enabled, layout, findings)
+    solids = (read_corners if layout.has_corners else read_boxes)(kept, system)
+    flat = int(np.count_nonzero(~solids.solid))
+    if flat:
+        state.reshape(-1)[kept.number[~solids.solid]] = 0
+        kept = Kept.of(source, layout, state)
+        _refuse_empty(kept, enabled, findings)
 
     # 3. their pressure, region and fields
-    gaps = Gaps()
-    pressure = read_history(source, "pressure", layout, keep, pressure_scale, gaps,
-                            enabled & ~has_pressure)
-    _refuse_gaps(gaps, time, layout, findings)
-    region, region_names = read_regions(source, layout, kept)
+    blocks = make_blocks(state, store.chunk[1:4])
+    streams = {n: FileStream(store if n == "pressure" else open_store(source, n, layout), blocks,
+                             *scale) for n, scale in scales.items()}
+    streams["pressure"].keep_start(start[kept.number])
+    region, region_names = read_regions(kept)
     parts = CellParts(
-        time=time, pressure=pressure, solids=solids, region=region, region_names=region_names,
-        layout=layout.label, shape=layout.shape, kept=kept,
-        fields={n: read_field(source, n, layout, keep) for n in names},
-        ids=_ids(source, layout, kept),
-        pressure_attrs={"file_units": source.text("pressure", "units") or "",
-                        "file_unit_in_pa": pressure_scale[0]},
-        attrs={
+        time=time, solids=solids, region=region, region_names=region_names,
+        layout=layout.label, shape=layout.shape, kept=kept.number,
+        fields={n: read_field(kept, n) for n in names if n not in in_time},
+        ids=_ids(kept), attrs={
             "crs_wkt": system.wkt, "crs_name": system.name, "xy_unit_in_m": system.unit_in_m,
             "vertical_datum": _vertical_datum(source, layout, system),
             "source_file": str(findings.path), "cells_in_file": layout.size,
-            "inactive": layout.size - len(kept),
+            "inactive": layout.size - len(kept.number),
             "dropped_marked_inactive": int(np.count_nonzero(~enabled)),
-            "dropped_without_pressure": int(np.count_nonzero(enabled & ~has_pressure)),
-            "dropped_without_volume": int(np.count_nonzero(~solids.solid)),
+            "dropped_without_pressure": int(np.count_nonzero(without)),
+            "dropped_without_volume": flat,
         },
     )
-    return assemble(parts, findings)
+    return assemble(parts, findings), streams
 
 
-def _refuse_giants(source: Source, layout: Layout, names: list[str]) -> None:
-    per_cell = 8 * layout.steps + 8 * (24 if layout.has_corners else 7) + 60
-    per_cell += sum(8 * (layout.steps if "time" in source.variables[n].dimensions else 1)
-                    for n in names)
-    needed = per_cell * layout.size
-    memory = os.sysconf("SC_PAGE_SIZE") * os.sysconf("SC_PHYS_PAGES")
-    if needed > memory:
-        raise CannotDo(
-            f"{source.findings.path}: the file claims {layout.size:.4g} cells and {layout.steps} "
-            f"steps, {needed / 2**30:.3g} GiB in memory, and this machine has "
-            f"{memory / 2**30:.3g} GiB; check its dimensions, or keep fewer steps or cells.")
+def scale_in_time(source: Source, name: str, layout: Layout
+                  ) -> tuple[tuple[float, float], dict[str, Any]]:
+    """`(factor, offset)` to SI of a variable in time, and its attributes."""
+    if name in DECLARED:
+        raise source.findings.error(f"variable '{name}' changes in time; it must be static, "
+                                    f"({', '.join(layout.dims)}).")
+    if name != "pressure":
+        return field_scale(source, name)
+    scale = _pressure_scale(source)
+    return scale, {**attributes(name), "file_units": source.text(name, "units") or "",
+                   "file_unit_in_pa": scale[0]}
 
 
 def _pressure_scale(source: Source) -> tuple[float, float]:
@@ -144,7 +169,8 @@ def _pressure_scale(source: Source) -> tuple[float, float]:
     return scale
 
 
-def _dates(source: Source, layout: Layout) -> np.ndarray:
+def dates_of(source: Source) -> np.ndarray:
+    """Dates of the pressure steps."""
     variable = source.need("time", "the date of each pressure step")
     if variable.dimensions != ("time",):
         raise source.findings.error(f"variable 'time' has dimensions {variable.dimensions}; "
@@ -153,7 +179,8 @@ def _dates(source: Source, layout: Layout) -> np.ndarray:
                         source.text("time", "calendar"), source.findings)
 
 
-def _map_system(source: Source, wanted: str | None) -> MapSystem:
+def map_system_of(source: Source, wanted: str | None) -> MapSystem:
+    """The coordinate system; see `subside.grid.crs.map_system`."""
     named = [t for n in ("pressure", *source.variables)
              if n in source.variables and (t := source.text(n, "grid_mapping"))]
     name = named[0].split(":")[0].split()[0] if named else "crs"
@@ -169,52 +196,44 @@ def _map_system(source: Source, wanted: str | None) -> MapSystem:
 def _enabled(source: Source, layout: Layout) -> np.ndarray:
     if "active" not in source.variables:
         return np.ones(layout.size, dtype=bool)
-    values = layout.full(source, "active")
-    return np.isfinite(values) & (values != 0)
+    dims = layout.dims_of(source, "active")
+    if dims == layout.dims:
+        enabled = np.empty(layout.size, dtype=bool)
+        for start, stop in layout.slabs(source.variables["active"]):
+            enabled[layout.cells_of(start, stop)] = source.flags(
+                "active", slice(start, stop)).reshape(-1)
+        return enabled
+    where = tuple(slice(None) if d in dims else None for d in layout.dims)
+    return np.broadcast_to(source.flags("active")[where], layout.shape).reshape(-1)
 
 
-def _refuse_empty(keep: np.ndarray, enabled: np.ndarray, layout: Layout, findings: Findings
-                  ) -> None:
-    if not keep.any():
-        findings.add(NOTHING, f"no cell is active: of {layout.size} cells in the file "
+def _refuse_empty(kept: Kept, enabled: np.ndarray, findings: Findings) -> None:
+    if not len(kept.number):
+        findings.add(NOTHING, f"no cell is active: of {kept.layout.size} cells in the file "
                      f"{np.count_nonzero(~enabled)} are marked inactive and the others have no "
                      "pressure at the first step or no volume; check 'active', the missing value "
                      "of 'pressure', and the geometry.")
 
 
-def _refuse_gaps(gaps: Gaps, time: np.ndarray, layout: Layout, findings: Findings) -> None:
-    if gaps.missing:
-        step = min(gaps.missing)
-        count, first = gaps.missing[step]
-        findings.add(GAP, f"{step_text(time, step)}: {counted(count)} "
-                     f"{'has' if count == 1 else 'have'} no pressure, first "
-                     f"{place_in_file(first, layout.shape)}, though there is one at step 0; mark "
-                     "them inactive or fill the gap.")
-    if gaps.stray:
-        step = min(gaps.stray)
-        count, first = gaps.stray[step]
-        findings.add(GAP, f"step 0 ({np.datetime_as_string(time[0], unit='D')}): "
-                     f"{counted(count)} {'has' if count == 1 else 'have'} no pressure, first "
-                     f"{place_in_file(first, layout.shape)}, though there is one at "
-                     f"{step_text(time, step)}; mark them inactive or fill the gap.")
-
-
-def _ids(source: Source, layout: Layout, kept: np.ndarray) -> dict[str, np.ndarray]:
+def _ids(kept: Kept) -> dict[str, np.ndarray]:
     """How a cell is named: k, j, i from 0, or the cell table's own columns."""
+    source, layout, number = kept.source, kept.layout, kept.number
     if layout.structured:
-        return dict(zip("kji", np.unravel_index(kept, layout.shape), strict=True))
+        found = {n: np.empty(len(number), np.int32) for n in "kji"}
+        places(number, *layout.shape[1:], *found.values())
+        return found
     found = {}
     if all(n in source.variables and source.variables[n].dimensions == ("cell",) for n in "kji"):
         for name in "kji":
-            found[name] = layout.full(source, name)[kept].astype(np.int64)
+            found[name] = kept.values(name).astype(np.int64)
     column = next((n for n in ("cell_id", "cell") if n in source.variables
                    and source.variables[n].dimensions == ("cell",)), None)
-    numbers = kept if column is None else _identifiers(source, column, kept)
+    numbers = number if column is None else _identifiers(source, column, number)
     return found | {"cell_id": numbers}
 
 
-def _identifiers(source: Source, column: str, kept: np.ndarray) -> np.ndarray:
-    values = np.ma.filled(np.ma.asarray(source.variables[column][...]))[kept]
+def _identifiers(source: Source, column: str, number: np.ndarray) -> np.ndarray:
+    values = np.ma.filled(np.ma.asarray(source.variables[column][...]))[number]
     return values.astype(str) if values.dtype.kind not in "iu" else values
 
 

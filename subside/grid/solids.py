@@ -11,8 +11,9 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from subside.grid.body_pass import measure_boxes
 from subside.grid.findings import Findings, declare
-from subside.grid.geometry import Hexahedra, hexahedra, mirrored
+from subside.grid.geometry import ABSURD, Hexahedra, hexahedra, mirrored
 from subside.grid.words import counted
 
 __all__ = ["BOX", "Solids", "judge_boxes", "judge_corners"]
@@ -26,7 +27,6 @@ TWISTED = declare("twisted", "warning")
 BOX = ("x", "y", "top", "bottom", "dx", "dy", "azimuth")
 _THIN = 1e-7  # of the width: thinner is nothing
 _FLAT = 1e-9  # of the cube of the extent: a smaller corner Jacobian is zero
-_ABSURD = 1e8  # m: no map reaches so far
 Place = Callable[[int], str]
 
 
@@ -63,19 +63,20 @@ def judge_corners(corners: np.ndarray, place: Place, findings: Findings) -> Soli
     place : callable
         Number of a cell (0 to m - 1) to its place in the file.
     """
-    reach = np.maximum(corners.max(axis=(1, 2)), -corners.min(axis=(1, 2)))
-    missing = ~(reach < _ABSURD)  # so written, NaN counts as missing
-    if missing.any():
-        findings.add(NO_GEOMETRY, f"{counted(int(missing.sum()))} "
-                     f"{_has(missing)} no corners (missing, or beyond {_ABSURD:g} m, as an "
-                     f"undeclared fill value is), first {place(_first(missing))}; give them "
-                     "corners or mark them inactive.")
     measured = hexahedra(corners)
+    missing = measured.missing
+    count = int(missing.sum())
+    if count:
+        findings.add(NO_GEOMETRY, f"{counted(count)} {_has(count)} no corners (missing, or beyond "
+                     f"{ABSURD:g} m, as an undeclared fill value is), first "
+                     f"{place(_first(missing))}; give them corners or mark them inactive.")
     solid = ~measured.zero
-    drop = corners[:, 4:, 2].sum(axis=1) - corners[:, :4, 2].sum(axis=1)
+    drop = measured.drop
     wrong = solid & (drop < 0)
     if solid.any() and wrong.sum() > 0.5 * solid.sum():
-        _upside_down(wrong, float(np.median(corners[solid, 0, 2])), drop / 4, place, findings)
+        first = _first(wrong)
+        _upside_down(int(wrong.sum()), first, float(np.median(corners[solid, 0, 2])),
+                     float(drop[first] / 4), place, findings)
     sign = 1.0
     if np.count_nonzero(measured.volume[solid] < 0) > 0.5 * np.count_nonzero(solid):
         findings.add(LEFT_HANDED, "the corners go round clockwise seen from above (a left-handed "
@@ -84,61 +85,65 @@ def judge_corners(corners: np.ndarray, place: Place, findings: Findings) -> Soli
         sign = -1.0
         mirrored(corners)
     _refuse_folded(measured, sign, place, findings)
-    kept = corners if solid.all() else corners[solid]
-    return Solids({"corners": kept}, sign * measured.volume[solid], measured.centroid[solid], solid)
+    if solid.all():
+        return Solids({"corners": corners}, sign * measured.volume, measured.centroid, solid)
+    return Solids({"corners": corners[solid]}, sign * measured.volume[solid],
+                  measured.centroid[solid], solid)
 
 
 def _refuse_folded(measured: Hexahedra, sign: float, place: Place, findings: Findings) -> None:
     volume = sign * measured.volume
     folded = measured.least_jacobian < -_FLAT * measured.scale
     negative = (~measured.zero & (volume < 0)) | (measured.zero & folded)
-    if negative.any():
+    count = int(negative.sum())
+    if count:
         first = _first(negative)
-        findings.add(NEGATIVE, f"{counted(int(negative.sum()))} {_has(negative)} a negative volume "
-                     f"or {'is' if negative.sum() == 1 else 'are'} folded, first {place(first)}, "
-                     f"volume {volume[first]:.6g} m3; check the order of its corners (top face "
-                     "going round, then the bottom face in the same sense), or mark it inactive.")
+        findings.add(NEGATIVE, f"{counted(count)} {_has(count)} a negative volume or "
+                     f"{'is' if count == 1 else 'are'} folded, first {place(first)}, volume "
+                     f"{volume[first]:.6g} m3; check the order of its corners (top face going "
+                     "round, then the bottom face in the same sense), or mark it inactive.")
     twisted = ~measured.zero & (volume > 0) & folded
-    if twisted.any():
+    count = int(twisted.sum())
+    if count:
         first = _first(twisted)
-        findings.add(TWISTED, f"{counted(int(twisted.sum()))} {_has(twisted)} a positive volume "
-                     f"but {'is' if twisted.sum() == 1 else 'are'} twisted at a corner, first "
-                     f"{place(first)}, corner Jacobian {measured.least_jacobian[first]:.3g} m3; "
-                     "volume and centroid are exact all the same.")
+        findings.add(TWISTED, f"{counted(count)} {_has(count)} a positive volume but "
+                     f"{'is' if count == 1 else 'are'} twisted at a corner, first {place(first)}, "
+                     f"corner Jacobian {measured.least_jacobian[first]:.3g} m3; volume and "
+                     "centroid are exact all the same.")
 
 
 def judge_boxes(box: dict[str, np.ndarray], place: Place, findings: Findings) -> Solids:
     """Measure boxes (x, y, top, bottom, dx, dy in m, azimuth in degrees) and refuse bad ones."""
-    for name in BOX:
-        missing = ~(np.abs(box[name]) < _ABSURD)
-        if missing.any():
-            findings.add(NO_GEOMETRY, f"variable '{name}' has no value in "
-                         f"{counted(int(missing.sum()))} (missing, or beyond {_ABSURD:g}, as an "
-                         f"undeclared fill value is), first {place(_first(missing))}; give it one "
-                         "or mark the cell inactive.")
-    for name in ("dx", "dy"):
-        narrow = box[name] <= 0
-        if narrow.any():
-            first = _first(narrow)
-            findings.add(NEGATIVE, f"{counted(int(narrow.sum()))} {_has(narrow)} {name} <= 0, "
-                         f"first {place(first)} ({box[name][first]:g} m); a length is positive.")
-    height = box["bottom"] - box["top"]
-    thin = np.abs(height) <= _THIN * np.sqrt(box["dx"] * box["dy"])
-    wrong = ~thin & (height < 0)
-    if wrong.any():
-        _upside_down(wrong, float(np.median(box["top"])), height, place, findings)
-    solid = ~thin
-    kept = {n: v[solid] for n, v in box.items()}
-    middle = 0.5 * (kept["top"] + kept["bottom"])
-    return Solids(kept, kept["dx"] * kept["dy"] * height[solid],
-                  np.stack([kept["x"], kept["y"], middle], axis=1), solid)
+    n = len(box["x"])
+    volume, centroid, solid = np.empty(n), np.empty((n, 3)), np.empty(n, bool)
+    counts, firsts = np.zeros(len(BOX) + 3, np.int64), np.zeros(len(BOX) + 3, np.int64)
+    measure_boxes(box["x"], box["y"], box["top"], box["bottom"], box["dx"], box["dy"],
+                  box["azimuth"], ABSURD, _THIN, volume, centroid, solid, counts, firsts)
+    found = [(int(c), int(f)) for c, f in zip(counts, firsts, strict=True)]
+    for name, (count, first) in zip(BOX, found, strict=False):
+        if count:
+            findings.add(NO_GEOMETRY, f"variable '{name}' has no value in {counted(count)} "
+                         f"(missing, or beyond {ABSURD:g}, as an undeclared fill value is), first "
+                         f"{place(first)}; give it one or mark the cell inactive.")
+    for name, (count, first) in zip(("dx", "dy"), found[len(BOX):], strict=False):
+        if count:
+            findings.add(NEGATIVE, f"{counted(count)} {_has(count)} {name} <= 0, first "
+                         f"{place(first)} ({box[name][first]:g} m); a length is positive.")
+    count, first = found[-1]
+    if count:
+        _upside_down(count, first, float(np.median(box["top"])),
+                     float(box["bottom"][first] - box["top"][first]), place, findings)
+    if not solid.all():
+        box = {name: values[solid] for name, values in box.items()}
+        volume, centroid = volume[solid], centroid[solid]
+    # the same numbers: of many cells they need not be kept twice
+    return Solids({**box, "x": centroid[:, 0], "y": centroid[:, 1]}, volume, centroid, solid)
 
 
-def _upside_down(wrong: np.ndarray, depth: float, height: np.ndarray, place: Place,
+def _upside_down(count: int, first: int, depth: float, height: float, place: Place,
                  findings: Findings) -> None:
-    first = _first(wrong)
-    text = (f"the bottom lies above the top in {counted(int(wrong.sum()))}, first {place(first)} "
-            f"by {-height[first]:.6g} m; ")
+    text = (f"the bottom lies above the top in {counted(count)}, first {place(first)} "
+            f"by {-height:.6g} m; ")
     if depth < 0:
         text += (f"depths come out negative (median {depth:.6g} m), so the 'positive' attribute is "
                  "probably the wrong one of \"down\" (depth) and \"up\" (elevation).")
@@ -152,5 +157,5 @@ def _first(flags: np.ndarray) -> int:
     return int(np.flatnonzero(flags)[0])
 
 
-def _has(flags: np.ndarray) -> str:
-    return "has" if np.count_nonzero(flags) == 1 else "have"
+def _has(count: int) -> str:
+    return "has" if count == 1 else "have"

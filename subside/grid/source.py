@@ -11,6 +11,7 @@ from typing import Any
 import numpy as np
 
 from subside.errors import InputError
+from subside.grid.disk import FileOnDisk, OpenFiles
 from subside.grid.findings import Findings
 from subside.units import scale_to_si
 
@@ -20,8 +21,12 @@ _LENGTH_OK = 0.01  # coordinates must tell 1 cm apart, m
 
 
 @contextmanager
-def open_source(path: Path, findings: Findings) -> Iterator[Source]:
-    """Open a NetCDF file; whatever the library raises becomes an `InputError`."""
+def open_source(path: Path, findings: Findings, among: OpenFiles | None = None
+                ) -> Iterator[Source]:
+    """Open a NetCDF file; whatever the library raises becomes an `InputError`.
+
+    `among` is for files that are read together later on, see `subside.grid.disk`.
+    """
     import netCDF4
 
     if path.is_dir() or not path.exists():
@@ -43,7 +48,7 @@ def open_source(path: Path, findings: Findings) -> Iterator[Source]:
             _refuse_cut_classic(path, magic, findings)
         dataset = netCDF4.Dataset(path, "r")
         try:
-            yield Source(dataset, findings)
+            yield Source(dataset, findings, FileOnDisk(path, among))
         finally:
             dataset.close()
     except (OSError, RuntimeError, UnicodeError) as error:
@@ -74,10 +79,11 @@ def _refuse_cut_classic(path: Path, magic: bytes, findings: Findings) -> None:
 class Source:
     """Variables of an open NetCDF file."""
 
-    def __init__(self, dataset: Any, findings: Findings) -> None:
+    def __init__(self, dataset: Any, findings: Findings, file: FileOnDisk) -> None:
         self.variables: dict[str, Any] = dict(dataset.variables)
         self.dataset = dataset
         self.findings = findings
+        self.file = file
 
     def need(self, name: str, purpose: str) -> Any:
         """The variable, or an error saying what the file has instead."""
@@ -112,20 +118,33 @@ class Source:
         except InputError as error:
             raise self.findings.error(f"variable '{name}' has units '{unit}': {error}") from None
 
-    def values(self, name: str, index: Any = ...) -> np.ndarray:
-        """float64 values in the file's unit, NaN where missing."""
+    def refuse_text(self, name: str) -> None:
+        """Refuse a variable that does not hold plain numbers."""
         variable = self.variables[name]
         if not (isinstance(variable.dtype, np.dtype) and variable.dtype.kind in "fiu"):
             kind = variable.dtype if isinstance(variable.dtype, np.dtype) else "text"
             raise self.findings.error(f"variable '{name}' holds {kind}, not numbers; write it as "
                                       "float64 or float32.")
-        raw = variable[index]
-        if np.asarray(raw).dtype.kind == "O":
+        if not isinstance(variable.datatype, np.dtype):
             raise self.findings.error(f"variable '{name}' holds a list in each cell, not a number; "
                                       "write it as plain numbers.")
+
+    def values(self, name: str, index: Any = ...) -> np.ndarray:
+        """float64 values in the file's unit, NaN where missing."""
+        self.refuse_text(name)
+        raw = self.variables[name][index]
         if isinstance(raw, np.ma.MaskedArray):
             return np.ma.filled(np.ma.asarray(raw, dtype=float), np.nan)
         return np.asarray(raw, dtype=float)
+
+    def flags(self, name: str, index: Any = ...) -> np.ndarray:
+        """Where a variable has a value that is not zero."""
+        self.refuse_text(name)
+        raw = self.variables[name][index]
+        if np.asarray(raw).dtype.kind in "iu":  # the usual flags: no floats of a whole grid
+            return np.asarray(np.ma.filled(raw, 0) != 0)
+        values: np.ndarray = np.ma.filled(np.ma.asarray(raw, dtype=float), np.nan)
+        return np.isfinite(values) & (values != 0)
 
     def sense(self, name: str) -> float:
         """+1 where the variable's `positive` is "down", -1 for "up"."""
@@ -153,12 +172,15 @@ class Source:
                                       "number(s), x0, y0[, z0], in the variable's own unit.")
         return np.concatenate([origin, np.zeros(max(numbers) - origin.size)])
 
-    def check_precision(self, name: str, largest: float, factor: float) -> None:
+    def check_precision(self, name: str, values: np.ndarray, factor: float) -> None:
         """Refuse single precision where it cannot tell 1 cm apart.
 
-        `largest` is the largest absolute value as stored, `factor` its unit in m.
+        `values` are as stored, `factor` is their unit in m.
         """
-        if self.variables[name].dtype != np.float32 or not np.isfinite(largest):
+        if self.variables[name].dtype.newbyteorder("=") != np.float32 or not values.size:
+            return
+        largest = float(np.nanmax(np.abs(values), initial=0))
+        if not np.isfinite(largest):
             return
         step = float(np.spacing(np.float32(largest))) * factor
         if step > _LENGTH_OK:

@@ -35,9 +35,10 @@ def place(cells: xr.Dataset, cell: int) -> str:
     return f"(cell={cell})"
 
 
-def step_text(time: np.ndarray, step: int) -> str:
-    """``"step 2 (2002-01-01)"``."""
-    return f"step {step} ({np.datetime_as_string(time[step], unit='D')})"
+def step_text(time: np.ndarray, step: int, in_file: int | None = None) -> str:
+    """``"step 2 (2002-01-01)"``; `in_file` is its number in the file where there are several."""
+    number = step if in_file is None else in_file
+    return f"step {number} ({np.datetime_as_string(time[step], unit='D')})"
 
 
 def pressure_text(pascal: float, attributes: Any) -> str:

@@ -276,11 +276,16 @@ class Quantity(Plugin, ABC):
         Written with the variable.
     needs : tuple of str
         Result variables it reads.
+    looks_back : int or None
+        How many dates before a date its value there depends on, 0 or 1, where it reads maps only:
+        it is then given some dates at a time. None, the default: it wants all dates at once, and
+        what it needs is held in memory.
     """
 
     unit: ClassVar[str] = ""
     long_name: ClassVar[str] = ""
     needs: ClassVar[tuple[str, ...]] = ()
+    looks_back: ClassVar[int | None] = None
 
     @abstractmethod
     def compute(self, result: xr.Dataset) -> xr.DataArray:

@@ -21,7 +21,10 @@ from subside.hooks import specs
 from subside.hooks.contracts import EarthModel, Exporter, Law, Plugin, Quantity, Reader
 from subside.params import Parameter
 
-__all__ = ["Registered", "Registry", "registry"]
+__all__ = ["PLUGIN_MODULE", "Registered", "Registry", "registry"]
+
+PLUGIN_MODULE = "subside_plugin_"
+"""How the names of modules begin that were loaded from a plug-in file."""
 
 _BASE: dict[str, type[Plugin]] = {
     "reader": Reader, "law": Law, "earth-model": EarthModel, "quantity": Quantity,
@@ -86,7 +89,7 @@ class Registry:
                               "in the scenario (relative to the scenario file).")
         self.discover()
         digest = hashlib.sha256(path.read_bytes()).hexdigest()
-        name = f"subside_plugin_{path.stem}_{digest[:12]}"
+        name = f"{PLUGIN_MODULE}{path.stem}_{digest[:12]}"
         if self._manager.has_plugin(name):
             return
         spec = importlib.util.spec_from_file_location(name, path)

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import numpy as np
+from numba import njit
 
-__all__ = ["bowl_volume", "extremes", "volume_above"]
+__all__ = ["extremes", "volumes"]
 
 _ONE_CENTIMETRE = 0.01
 
@@ -26,29 +27,32 @@ def extremes(values: np.ndarray, x: np.ndarray, y: np.ndarray) -> dict[str, np.n
         `_x`, `_y`, each (nt,).
     """
     found: dict[str, np.ndarray] = {}
-    for name, signed in (("max_subsidence", values), ("max_uplift", -values)):
-        place = signed.argmax(axis=1)
-        found[name] = np.maximum(signed[np.arange(values.shape[0]), place], 0.0)
+    dates = np.arange(values.shape[0])
+    for name, sign, place in (("max_subsidence", 1.0, values.argmax(axis=1)),
+                              ("max_uplift", -1.0, values.argmin(axis=1))):
+        found[name] = np.maximum(sign * values[dates, place], 0.0)
         found[f"{name}_x"] = x[place]
         found[f"{name}_y"] = y[place]
     return found
 
 
-def bowl_volume(moments: dict[str, np.ndarray], ratio: dict[str, np.ndarray]) -> np.ndarray:
-    """Volume of the bowl out to infinity, m3 (nt,): moments times the earth's volume ratio.
+def volumes(subsidence: np.ndarray, pixel_area: float,
+            threshold: float = _ONE_CENTIMETRE) -> tuple[np.ndarray, np.ndarray]:
+    """Volume of the bowl on a map, m3 (nt,): of all of it, and of what sinks by `threshold` (m).
 
-    Parameters
-    ----------
-    moments : dict of source kind to array (nt, cell)
-        m3 of volume lost.
-    ratio : dict of source kind to array (cell,)
-        Bowl volume per m3.
+    `subsidence` is (nt, pixel) in m, positive down.
     """
-    return np.asarray(sum(moment @ ratio[source] for source, moment in moments.items()))
+    every, deep = _sums(np.ascontiguousarray(subsidence, dtype=float), threshold)
+    return every * pixel_area, deep * pixel_area
 
 
-def volume_above(subsidence: np.ndarray, pixel_area: float,
-                 threshold: float = _ONE_CENTIMETRE) -> np.ndarray:
-    """Volume over the pixels that sink by `threshold` (m) or more, m3 (nt,)."""
-    inside = subsidence >= threshold
-    return np.asarray(np.where(inside, subsidence, 0.0).sum(axis=(1, 2)) * pixel_area)
+@njit(cache=True, nogil=True, fastmath={"reassoc", "contract"})
+def _sums(values: np.ndarray, threshold: float) -> tuple[np.ndarray, np.ndarray]:
+    every, deep = np.zeros(values.shape[0]), np.zeros(values.shape[0])
+    for t in range(values.shape[0]):
+        a, b = 0.0, 0.0
+        for n in range(values.shape[1]):
+            a += values[t, n]
+            b += values[t, n] if values[t, n] >= threshold else 0.0
+        every[t], deep[t] = a, b
+    return every, deep

@@ -22,6 +22,7 @@ class Tilt(Quantity):
     source = "gradient of subsidence, from derivatives of the kernels"
     unit = "1"
     long_name = "tilt"
+    looks_back = 0
     needs: ClassVar[tuple[str, ...]] = ("slope_east", "slope_north")
 
     def compute(self, result: xr.Dataset) -> xr.DataArray:
@@ -41,6 +42,7 @@ class HorizontalStrainMajor(Quantity):
     source = "eigenvalues of the horizontal strain tensor"
     unit = "1"
     long_name = "major principal horizontal strain"
+    looks_back = 0
     needs: ClassVar[tuple[str, ...]] = _STRAIN
 
     def compute(self, result: xr.Dataset) -> xr.DataArray:
@@ -55,6 +57,7 @@ class HorizontalStrainMinor(Quantity):
     source = "eigenvalues of the horizontal strain tensor"
     unit = "1"
     long_name = "minor principal horizontal strain"
+    looks_back = 0
     needs: ClassVar[tuple[str, ...]] = _STRAIN
 
     def compute(self, result: xr.Dataset) -> xr.DataArray:
@@ -69,6 +72,7 @@ class SubsidenceRate(Quantity):
     source = "difference of subsidence over the interval"
     unit = "m s-1"
     long_name = "rate of subsidence"
+    looks_back = 1
     needs: ClassVar[tuple[str, ...]] = ("subsidence",)
 
     def compute(self, result: xr.Dataset) -> xr.DataArray:

@@ -3,24 +3,29 @@
 The spacing follows the shallowest cell, so that a lattice costs as 1/depth^2. Cells are put into
 fine classes of depth, and the cheapest way to join neighbouring classes into bands is found by
 dynamic programming over an estimate of the time. A band that a plain sum would do faster (few
-cells, or a lone shallow one) goes to the plain sum.
+cells, or a lone shallow one) goes to the plain sum, and one that is seen from few targets is summed
+pillar by pillar.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 
+from subside.superposition.census import HARD, Census, Group
 from subside.superposition.frame import Axis
-from subside.superposition.sampled import MANY_POINTS, SampledCells
 from subside.superposition.stencil import Stencil
 
-__all__ = ["Band", "Task", "depth_nodes_guess", "direct_seconds", "make_bands"]
+__all__ = [
+    "Band", "Task", "depth_nodes_guess", "direct_seconds", "make_bands", "worth_it",
+]
 
-_STEP = 1.12
-"""Ratio of depths within a fine class."""
-_CLASSES = 40
+_PAIRS_WORTH_IT = 1e8
+"""Cell-target pairs below which the plain sum takes a second at most."""
+_TARGETS_WORTH_IT, _DATES_WORTH_IT = 400, 30
+"""The check of a faster way is itself a plain sum at about 200 targets and few dates."""
 
 # Seconds on two cores of 2024, measured; only their ratios matter for the choice.
 _MULTIPLY = 1 / 2.0e10
@@ -49,6 +54,10 @@ class Task:
         Smallest and largest x and y of the targets, m.
     closed_form : bool
         Whether the kernel is one (a radial table is slower in the plain sum).
+    cells_of_pillar : float
+        How many cells share an outline, on average.
+    level : bool
+        Whether all cells have level faces.
     """
 
     steps: int
@@ -58,24 +67,36 @@ class Task:
     x: tuple[float, float]
     y: tuple[float, float]
     closed_form: bool
+    cells_of_pillar: float = 1.0
+    level: bool = False
+
+
+Way = Stencil | Literal["pillars", "plain"]
+"""How a band is summed: on a lattice with a stencil, pillar by pillar, or plainly."""
 
 
 @dataclass(frozen=True)
 class Band:
-    """Some cells, and the stencil of their lattice; no stencil means the plain sum."""
+    """Some classes of cells, and how they are summed."""
 
-    which: np.ndarray
-    stencil: Stencil | None
+    group: Group
+    way: Way
     seconds: float
 
 
-def make_bands(cells: SampledCells, task: Task, stencils: list[Stencil], depth_error: float,
+def worth_it(cells: int, targets: int, dates: int) -> bool:
+    """A first look at the size: `make_bands` compares closer costs."""
+    large = float(cells) * targets >= _PAIRS_WORTH_IT
+    return large and (targets >= _TARGETS_WORTH_IT or dates >= _DATES_WORTH_IT)
+
+
+def make_bands(census: Census, task: Task, stencils: list[Stencil], depth_error: float,
                forced: bool = False) -> list[Band]:
     """The cheapest partition of the cells.
 
     Parameters
     ----------
-    cells : SampledCells
+    census : Census
     task : Task
     stencils : list of Stencil
         Those that keep the tolerance; each band takes the cheapest.
@@ -84,73 +105,50 @@ def make_bands(cells: SampledCells, task: Task, stencils: list[Stencil], depth_e
     forced : bool
         Leave out the plain sum wherever a lattice is possible.
     """
-    easy = cells.points <= MANY_POINTS
-    hard = np.nonzero(~easy)[0]
-    bands = []
-    if hard.size:
-        bands.append(Band(hard, None, direct_seconds(hard.size, MANY_POINTS * hard.size, task)))
-    if not easy.any():
-        return bands
-    shallow, deep = float(cells.top[easy].min()), float(cells.top[easy].max())
-    count = int(np.clip(np.ceil(np.log(deep / shallow) / np.log(_STEP)), 1, _CLASSES))
-    edges = np.geomspace(shallow, deep, count + 1)[1:-1]
-    number = np.searchsorted(edges, cells.top, side="right")
-    classes = [_Group.of(cells, np.nonzero(easy & (number == n))[0]) for n in range(count)]
-    groups = [group for group in classes if group is not None]
-    best: list[tuple[float, int, Stencil | None]] = [(0.0, 0, None)]
+    hard = [group for group in census.groups if group.classes == (HARD,)]
+    groups = [group for group in census.groups if group.classes != (HARD,)]
+    bands = [Band(group, "plain", direct_seconds(group.count, group.points, task))
+             for group in hard]
+    best: list[tuple[float, int, Group | None, Way]] = [(0.0, 0, None, "plain")]
     for end in range(1, len(groups) + 1):
         joined = groups[end - 1]
         options = []
         for begin in range(end - 1, -1, -1):
             joined = joined if begin == end - 1 else groups[begin].with_(joined)
-            seconds, stencil = _cheapest(joined, task, stencils, depth_error, forced)
-            options.append((best[begin][0] + seconds, begin, stencil))
+            seconds, way = _cheapest(joined, task, stencils, depth_error, forced)
+            options.append((best[begin][0] + seconds, begin, joined, way))
         best.append(min(options, key=lambda option: option[0]))
     end = len(groups)
     while end > 0:
-        total, begin, stencil = best[end]
-        which = np.concatenate([group.which for group in groups[begin:end]])
-        bands.append(Band(np.sort(which), stencil, total - best[begin][0]))
+        total, begin, group, way = best[end]
+        assert group is not None
+        bands.append(Band(group, way, total - best[begin][0]))
         end = begin
     return bands
 
 
-@dataclass(frozen=True)
-class _Group:
-    which: np.ndarray
-    count: int
-    points: float
-    widths: tuple[float, float]
-    box: np.ndarray
-    top: float
-    bottom: float
-
-    @classmethod
-    def of(cls, cells: SampledCells, which: np.ndarray) -> _Group | None:
-        if not which.size:
-            return None
-        extent = cells.extent[which]
-        box = np.array([extent[:, 0].min(), -extent[:, 1].max(), extent[:, 2].min(),
-                        -extent[:, 3].max()])
-        widths = (float((extent[:, 1] - extent[:, 0]).sum()),
-                  float((extent[:, 3] - extent[:, 2]).sum()))
-        return cls(which, which.size, float(cells.points[which].sum()), widths, box,
-                   float(cells.top[which].min()), float(cells.bottom[which].max()))
-
-    def with_(self, other: _Group) -> _Group:
-        """Both together, but for their cells' numbers."""
-        return _Group(self.which, self.count + other.count, self.points + other.points,
-                      (self.widths[0] + other.widths[0], self.widths[1] + other.widths[1]),
-                      np.minimum(self.box, other.box), min(self.top, other.top),
-                      max(self.bottom, other.bottom))
+def _cheapest(group: Group, task: Task, stencils: list[Stencil], depth_error: float,
+              forced: bool) -> tuple[float, Way]:
+    options: list[tuple[float, Way]] = [
+        (_lattice_seconds(group, task, stencil, depth_error), stencil) for stencil in stencils]
+    dearer = _FORCE if forced else 1.0
+    options.append((dearer * direct_seconds(group.count, group.points, task), "plain"))
+    if task.cells_of_pillar > 1.0:
+        options.append((dearer * _pillar_seconds(group, task, depth_error), "pillars"))
+    return min(options, key=lambda option: option[0])
 
 
-def _cheapest(group: _Group, task: Task, stencils: list[Stencil], depth_error: float,
-              forced: bool) -> tuple[float, Stencil | None]:
-    costs = [(_lattice_seconds(group, task, stencil, depth_error), stencil) for stencil in stencils]
-    seconds, stencil = min(costs, key=lambda cost: cost[0], default=(np.inf, None))
-    plain = direct_seconds(group.count, group.points, task) * (_FORCE if forced else 1.0)
-    return (seconds, stencil) if seconds < plain else (plain, None)
+def _pillar_seconds(group: Group, task: Task, depth_error: float) -> float:
+    """Bringing cells together on depth nodes, then the plain sum over what is left."""
+    nodes = depth_nodes_guess(group.top, group.bottom, depth_error)
+    sources = nodes * group.count / task.cells_of_pillar
+    places = 1.0 if task.level else group.points / group.count
+    series = task.steps * task.sources
+    together = group.count * places * nodes * series * 2 * _WEIGHT
+    pair = _PAIR if task.closed_form else _PAIR_TABLE
+    influence = task.targets * sources * group.points / group.count * pair * task.components / 3
+    product = (task.targets * sources * places * 2 * series * task.components * _MULTIPLY)
+    return float(together + influence + product)
 
 
 def direct_seconds(cells: float, points: float, task: Task) -> float:
@@ -171,10 +169,10 @@ def depth_nodes_guess(low: float, high: float, error: float) -> int:
     return max(int(np.ceil(np.log(10.0 / error) / np.log(rho))), 2)
 
 
-def _lattice_seconds(group: _Group, task: Task, stencil: Stencil, depth_error: float) -> float:
+def _lattice_seconds(group: Group, task: Task, stencil: Stencil, depth_error: float) -> float:
     spacing, width = group.top / stencil.ratio, stencil.width
-    x = Axis.around((group.box[0], -group.box[1]), task.x, spacing, width)
-    y = Axis.around((group.box[2], -group.box[3]), task.y, spacing, width)
+    x = Axis.around((group.box[0], group.box[1]), task.x, spacing, width)
+    y = Axis.around((group.box[2], group.box[3]), task.y, spacing, width)
     nodes = depth_nodes_guess(group.top, group.bottom, depth_error)
     plane = float(x.length) * y.length
     series = task.steps * task.sources

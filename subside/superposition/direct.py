@@ -12,6 +12,7 @@ from typing import Any
 
 import numba
 import numpy as np
+from numba import njit
 from threadpoolctl import threadpool_limits
 
 from subside.errors import InputError
@@ -21,7 +22,7 @@ from subside.superposition.table import RadialTable
 from subside.superposition.tiles import add_surface
 from subside.superposition.underground import add_underground
 
-__all__ = ["Direct"]
+__all__ = ["Direct", "DirectSum", "losing_volume"]
 
 _SHARE_OF_TOLERANCE = 0.1
 """The part of the tolerance that sampling a finite cell by points may use."""
@@ -54,38 +55,88 @@ class Direct:
         progress: Callable[[float], None] = lambda pairs: None,
     ) -> Fields:
         """See `subside.superposition.interface.Solver`."""
-        names = DISPLACEMENT + (GRADIENT if gradient else ())
         steps = next(iter(moments.values())).shape[0]
-        surface = np.nonzero(targets.at_surface)[0]
-        deep = np.nonzero(~targets.at_surface)[0]
-        _can_be_done(earth, targets, deep, gradient)
-        self.achieved_error = _SHARE_OF_TOLERANCE * tolerance
-        result = np.zeros((len(names), steps, targets.x.size))
+        live = np.nonzero(losing_volume(*moments.values()))[0]
+        plain = DirectSum(bodies, targets, earth, tolerance=tolerance, gradient=gradient,
+                          cells=live)
+        self.achieved_error = plain.error
+        result = np.zeros((len(plain.names), steps, targets.x.size))
+        progress(float(bodies.count - live.size) * targets.x.size * len(moments))
         block = max(256, int(_PAIRS_AT_ONCE / max(targets.x.size, 1)))
         # each thread multiplies its own tiles: threads of the matrix library would be in the way
         with threadpool_limits(limits=1, user_api="blas"):
-            for source, moment in moments.items():
-                live = np.nonzero(np.any(moment != 0.0, axis=0))[0]
-                progress(float(bodies.count - live.size) * targets.x.size)
-                if not live.size:
-                    continue
-                at_surface = _Surface(source, earth, bodies, live, targets, surface, tolerance,
-                                      gradient)
-                underground = _Underground(source, earth, bodies, targets, deep, tolerance)
-                field = {"surface": np.zeros((len(names), steps, surface.size)),
-                         "deep": np.zeros((len(names), steps, deep.size))}
-                for start in range(0, live.size, block):
-                    cells = live[start:start + block]
-                    corners = bodies.corners(cells)
-                    strength = np.ascontiguousarray(moment[:, cells].T)
-                    if surface.size:
-                        at_surface.add(field["surface"], cells, corners, strength)
-                    if deep.size:
-                        underground.add(field["deep"], cells, corners, strength)
-                    progress(float(cells.size) * targets.x.size)
-                result[:, :, surface] += field["surface"]
-                result[:, :, deep] += field["deep"]
-        return dict(zip(names, result, strict=True))
+            for start in range(0, live.size, block):
+                cells = live[start:start + block]
+                plain.add(result, cells, {source: np.ascontiguousarray(moment[:, cells])
+                                          for source, moment in moments.items()})
+                progress(float(cells.size) * targets.x.size * len(moments))
+        return dict(zip(plain.names, result, strict=True))
+
+
+class DirectSum:
+    """The plain sum, some cells at a time.
+
+    Parameters
+    ----------
+    bodies, targets, earth, tolerance, gradient
+        As in `Solver.solve`.
+    cells : array of int
+        All cells that may come.
+
+    Raises
+    ------
+    InputError
+        What the earth model cannot give.
+    """
+
+    def __init__(self, bodies: Bodies, targets: Targets, earth: Any, *, tolerance: float,
+                 gradient: bool, cells: np.ndarray) -> None:
+        self.names = DISPLACEMENT + (GRADIENT if gradient else ())
+        self.error = _SHARE_OF_TOLERANCE * tolerance
+        surface = np.nonzero(targets.at_surface)[0]
+        deep = np.nonzero(~targets.at_surface)[0]
+        _can_be_done(earth, targets, deep, gradient)
+        self._bodies, self._surface, self._deep = bodies, surface, deep
+        self._make = (
+            lambda source: _Surface(source, earth, bodies, cells, targets, surface, tolerance,
+                                    gradient),
+            lambda source: _Underground(source, earth, bodies, targets, deep, tolerance))
+        self._of_source: dict[str, tuple[_Surface, _Underground]] = {}
+
+    def add(self, result: np.ndarray, cells: np.ndarray, moments: Mapping[str, np.ndarray]) -> None:
+        """Add cells whose moments are (time, cell) into result (component, time, target)."""
+        corners = self._bodies.corners(cells)
+        steps = result.shape[1]
+        for source, moment in moments.items():
+            if source not in self._of_source:
+                self._of_source[source] = (self._make[0](source), self._make[1](source))
+            at_surface, underground = self._of_source[source]
+            strength = np.ascontiguousarray(moment.T)
+            for places, part in ((self._surface, at_surface), (self._deep, underground)):
+                if places.size == result.shape[2]:
+                    part.add(result, cells, corners, strength)
+                elif places.size:
+                    field = np.zeros((len(self.names), steps, places.size))
+                    part.add(field, cells, corners, strength)
+                    result[:, :, places] += field
+
+
+def losing_volume(*moments: np.ndarray) -> np.ndarray:
+    """Which cells have a moment other than zero at any time, (cell,)."""
+    live = np.zeros(moments[0].shape[1], dtype=np.bool_)
+    for moment in moments:
+        _mark(live, moment)
+    return live
+
+
+@njit(cache=True, nogil=True)
+def _mark(live: np.ndarray, moment: np.ndarray) -> None:
+    block = 4096  # cells that stay in cache from one step to the next
+    for first in range(0, live.size, block):
+        for t in range(moment.shape[0]):
+            for cell in range(first, min(first + block, live.size)):
+                if moment[t, cell] != 0.0:
+                    live[cell] = True
 
 
 def _can_be_done(earth: Any, targets: Targets, deep: np.ndarray, gradient: bool) -> None:
@@ -143,7 +194,7 @@ class _Surface:
         boxes = np.zeros((cells.size, 7))
         if self._boxes is not None and self._poisson is not None:
             exact = rule.prod(axis=1) > _EXACT_FROM_POINTS
-            boxes = self._boxes[cells]
+            boxes = self._boxes(cells)
         _refuse_too_shallow(corners, np.where(exact, 1, rule.prod(axis=1)))
         add_surface(field, self._width, self._x, self._y, corners, rule, boxes, exact, strength,
                     self._closure, self._poisson or 0.0, *self._table)
@@ -163,6 +214,6 @@ class _Underground:
     def add(self, field: np.ndarray, cells: np.ndarray, corners: np.ndarray,
             strength: np.ndarray) -> None:
         """Add the cells' field into (component, time, target)."""
-        boxes = self._boxes[cells] if self._boxes is not None else np.zeros((0, 7))
+        boxes = self._boxes(cells) if self._boxes is not None else np.zeros((0, 7))
         add_underground(field, self._x, self._y, self._z, corners, boxes, strength, self._closure,
                         self._poisson, self._tolerance)

@@ -85,7 +85,7 @@ def chebyshev(low: float, high: float, count: int) -> tuple[np.ndarray, np.ndarr
     return nodes, np.sin(angle) * (-1.0) ** np.arange(count)
 
 
-@njit(cache=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy")
 def barycentric(out: np.ndarray, depth: float, depths: np.ndarray, weights: np.ndarray) -> None:
     """Barycentric interpolation: the shares of the depth nodes."""
     total = 0.0

@@ -37,13 +37,18 @@ class Bodies:
     corners : callable
         Index array (m,) to corners (m, 8, 3): x, y, depth in m; 4 of the top face going round,
         then the 4 below them.
-    boxes : array (count, 7) or None
-        x, y, top, bottom, dx, dy, azimuth (m, degrees) when every cell is an upright box.
+    boxes : callable or None
+        Index array (m,) to (m, 7): x, y, top, bottom, dx, dy, azimuth (m, degrees), when every cell
+        is an upright box.
+    column : array of int (count,) or None
+        Number of the upright pillar each cell stands in: cells of one column have the same outline
+        seen from above, all the way down. None: nothing is known of columns.
     """
 
     count: int
     corners: Callable[[np.ndarray], np.ndarray]
-    boxes: np.ndarray | None = None
+    boxes: Callable[[np.ndarray], np.ndarray] | None = None
+    column: np.ndarray | None = None
 
 
 @dataclass(frozen=True)

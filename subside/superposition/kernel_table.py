@@ -155,7 +155,7 @@ def apply_kernels(field: np.ndarray, moments: np.ndarray, kernels: np.ndarray,
         mirrored = row > rows // 2
         # the loop's own counter is unsigned, and its differences would be floats
         k = rows - np.int64(row) if mirrored else np.int64(row)
-        total = np.empty(parts)
+        total = np.empty(parts, dtype=field.dtype)
         for col in range(columns):
             for c in range(components):
                 total[:] = 0.0
@@ -163,7 +163,7 @@ def apply_kernels(field: np.ndarray, moments: np.ndarray, kernels: np.ndarray,
                     kernel = kernels[k, col, c, n]
                     for t in range(parts):
                         total[t] += kernel * moments[row, col, n, t]
-                sign = -1.0 if mirrored and odd[c, 1] == 1 else 1.0
+                sign = field.dtype.type(-1.0 if mirrored and odd[c, 1] == 1 else 1.0)
                 if odd[c, 0] != odd[c, 1]:  # times -i
                     for t in range(0, parts, 2):
                         field[row, col, c, t] = sign * total[t + 1]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numba import njit, prange
@@ -28,6 +29,11 @@ class Raster:
     x: np.ndarray
     y: np.ndarray
     order: np.ndarray
+
+    @cached_property
+    def straight(self) -> bool:
+        """Whether the targets of each row come one after another, west to east."""
+        return bool((np.diff(self.order, axis=1) == 1).all())
 
     @classmethod
     def of(cls, x: np.ndarray, y: np.ndarray) -> Raster | None:
@@ -76,31 +82,46 @@ class Sampler:
             _to_points(result, first, steps, flat, self._row, self._wy, self._column, self._wx)
         else:
             _to_raster(result, first, steps, flat, self._row, self._wy, self._column, self._wx,
-                       self._raster.order)
+                       self._raster.order, self._raster.straight)
 
 
 @njit(cache=True, parallel=True, fastmath={"contract"})
 def _to_raster(result: np.ndarray, first: int, steps: int, field: np.ndarray, row: np.ndarray,
-               wy: np.ndarray, column: np.ndarray, wx: np.ndarray, order: np.ndarray) -> None:
-    """One pass along y, one along x."""
-    width = wx.shape[1]
+               wy: np.ndarray, column: np.ndarray, wx: np.ndarray, order: np.ndarray,
+               straight: bool) -> None:
+    """One pass along y, one along x, then whole rows of the map.
+
+    `straight`: the targets of a row stand one after another in `result`.
+    """
+    width, columns = wx.shape[1], column.size
     series = field.shape[2]
     for j in prange(row.size):
         line = np.zeros((field.shape[1], series))
         for a in range(width):
-            line += wy[j, a] * field[row[j] + a]
-        read = np.empty((series, column.size))
+            weight, source = wy[j, a], field[row[j] + a]
+            for i in range(line.shape[0]):
+                for k in range(series):
+                    line[i, k] += weight * source[i, k]
+        # rows a little longer than they need be, or they would all fall on the same cache lines
+        read = np.empty((series, columns + 9))
         value = np.empty(series)
-        for i in range(column.size):
+        for i in range(columns):
             value[:] = 0.0
             for b in range(width):
+                weight, source = wx[i, b], line[column[i] + b]
                 for k in range(series):
-                    value[k] += wx[i, b] * line[column[i] + b, k]
-            read[:, i] = value
+                    value[k] += weight * source[k]
+            for k in range(series):
+                read[k, i] = value[k]
         for k in range(series):
             target = result[k // steps, first + k % steps]
-            for i in range(column.size):
-                target[order[j, i]] += read[k, i]
+            if straight:
+                start = order[j, 0]
+                for i in range(columns):
+                    target[start + i] += read[k, i]
+            else:
+                for i in range(columns):
+                    target[order[j, i]] += read[k, i]
 
 
 @njit(cache=True, parallel=True, fastmath={"contract"})

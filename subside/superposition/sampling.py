@@ -10,7 +10,7 @@ from subside.superposition.rule import GAUSS_NODES, GAUSS_WEIGHTS
 __all__ = ["points_in", "sample_into"]
 
 
-@njit(cache=True)
+@njit(cache=True, nogil=True)
 def points_in(rule: np.ndarray) -> int:
     """Number of sample points of a cell, from its Gauss orders and panels."""
     total = 1
@@ -19,7 +19,7 @@ def points_in(rule: np.ndarray) -> int:
     return total
 
 
-@njit(cache=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy")
 def sample_into(points: np.ndarray, corners: np.ndarray, rule: np.ndarray,
                 edge: np.ndarray) -> int:
     """Write a cell's points (x, y, depth, weight; the weights sum to 1) into the first rows.
@@ -77,7 +77,7 @@ def sample_into(points: np.ndarray, corners: np.ndarray, rule: np.ndarray,
     return row
 
 
-@njit(cache=True)
+@njit(cache=True, nogil=True)
 def _on_face(out: np.ndarray, at: int, c0: float, c1: float, c2: float, c3: float, u: float,
              v: float) -> None:
     """Bilinear value on a face, and its derivatives by u and v, into out[at:at + 3]."""

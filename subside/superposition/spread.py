@@ -2,25 +2,25 @@
 
 A cell is sampled by its Gauss points, averaged into its weights, so that its size costs nothing
 over time. Cells are sorted by lattice bin; the weights of a bin form a small matrix that meets the
-moments of many steps at once. Bins lie in strips of two colours: strips of one colour are worked on
-in parallel and never write the same row.
+moments of many steps at once. Cells that stand in upright columns have a shorter way: `columns`.
 """
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit, prange
+from numba import njit
 
 from subside.superposition.frame import Axis, barycentric
 from subside.superposition.rule import GAUSS_NODES
 from subside.superposition.sampling import points_in, sample_into
+from subside.superposition.stencil import stencil_into
 
-__all__ = ["Bins", "extent_of_points", "gather", "spread"]
+__all__ = ["Bins", "deposit_bins", "extent_of_points", "strength_of"]
 
 _CHUNK = 256
-_GATHERED = 1024
 _ENOUGH = 32
 """Cells after which a bin is cut where wider cells begin, which need more nodes."""
 
@@ -37,8 +37,6 @@ class Bins:
         First node of the cell's stencils.
     extra_rows, extra_columns : array of int (cell,)
         Nodes that the cell needs beyond one stencil, because its points lie in several bins.
-    strips : array of int (strip + 1,)
-        Where each strip of rows begins in `order`; even strips do not touch each other, nor odd.
     """
 
     order: np.ndarray
@@ -46,34 +44,17 @@ class Bins:
     column: np.ndarray
     extra_rows: np.ndarray
     extra_columns: np.ndarray
-    strips: np.ndarray
 
     @classmethod
-    def of(cls, extent: np.ndarray, x: Axis, y: Axis, width: int) -> Bins:
+    def of(cls, extent: np.ndarray, x: Axis, y: Axis) -> Bins:
         """Sort cells; `extent (cell, 4 or more)` is as `extent_of_points` gives it."""
         column, last_column = _first_nodes(extent[:, :2], x)
         row, last_row = _first_nodes(extent[:, 2:4], y)
         extra_rows, extra_columns = last_row - row, last_column - column
-        height = width + int(extra_rows.max())
-        wide = int(extra_columns.max()) + 1
-        tall = int(extra_rows.max()) + 1
+        wide, tall = int(extra_columns.max()) + 1, int(extra_rows.max()) + 1
         key = ((row * x.sources + column) * tall + extra_rows) * wide + extra_columns
         order = np.argsort(key, kind="stable")
-        edges = np.arange(0, y.sources + height, height)
-        strips = np.searchsorted(row[order], edges)
-        return cls(order, row[order], column[order], extra_rows[order], extra_columns[order],
-                   strips)
-
-    def turns(self, most: int) -> list[np.ndarray]:
-        """Groups of strips of one colour, of about `most` cells at most: one call each."""
-        size = np.diff(self.strips)
-        groups = []
-        for colour in (0, 1):
-            mine = np.arange(colour, size.size, 2)
-            mine = mine[size[mine] > 0]
-            cut = np.cumsum(size[mine]) // max(most, 1)
-            groups += [mine[cut == c] for c in np.unique(cut)]
-        return groups
+        return cls(order, row[order], column[order], extra_rows[order], extra_columns[order])
 
 
 def _first_nodes(interval: np.ndarray, axis: Axis) -> tuple[np.ndarray, np.ndarray]:
@@ -83,14 +64,14 @@ def _first_nodes(interval: np.ndarray, axis: Axis) -> tuple[np.ndarray, np.ndarr
     return low.astype(np.int64), high.astype(np.int64)
 
 
-@njit(cache=True, parallel=True)
+@njit(cache=True, nogil=True)
 def extent_of_points(corners: np.ndarray, rule: np.ndarray) -> np.ndarray:
     """Smallest and largest x, y of each cell's points, and of its corners' depths, (cell, 6).
 
     The trilinear map takes its extremes over a block at the block's corners.
     """
     extent = np.empty((corners.shape[0], 6))
-    for cell in prange(corners.shape[0]):
+    for cell in range(corners.shape[0]):
         c = corners[cell]
         near = np.empty(3)
         for d in range(3):
@@ -112,40 +93,53 @@ def extent_of_points(corners: np.ndarray, rule: np.ndarray) -> np.ndarray:
     return extent
 
 
-@njit(cache=True, parallel=True)
-def gather(strength: np.ndarray, moments: tuple[np.ndarray, ...], cells: np.ndarray,
-           rank: np.ndarray) -> None:
-    """Moments of some cells, all times of a cell together: ``strength (cell, source * time)``.
-
-    `cells` ascends, and `rank` holds their rows in `strength`: memory is read in its order. Read
-    bin by bin, every number would be a cache miss of its own.
-    """
-    steps = moments[0].shape[0]
-    for part in prange((cells.size + _GATHERED - 1) // _GATHERED):
-        first = part * _GATHERED
-        last = min(first + _GATHERED, cells.size)
-        for s in range(len(moments)):
-            for start in range(0, steps, 8):  # a cache line of the result at a time
-                for c in range(first, last):
-                    for t in range(start, min(start + 8, steps)):
-                        strength[rank[c], s * steps + t] = moments[s][t, cells[c]]
-
-
-@njit(cache=True, parallel=True)
-def spread(lattice: np.ndarray, begin: np.ndarray, end: np.ndarray, strength: np.ndarray,
-           corners: np.ndarray, rule: np.ndarray, row: np.ndarray, column: np.ndarray,
-           extra_rows: np.ndarray, extra_columns: np.ndarray, x_origin: float, y_origin: float,
-           spacing: float, coefficients: np.ndarray, depths: np.ndarray,
-           weights: np.ndarray) -> None:
-    """Add cells onto the lattice.
+def strength_of(moments: Mapping[str, np.ndarray], sources: Sequence[str],
+                places: np.ndarray) -> np.ndarray:
+    """Moments of some cells in rows, (cell, source * time).
 
     Parameters
     ----------
-    lattice : array (row, column * depth node * source * time)
-    begin, end : array of int (strip,)
-        Cells of each strip; the strips must not touch each other.
-    strength : array (cell, source * time)
-        See `gather`.
+    moments : mapping of source to array (time, n)
+    sources : sequence of str
+        All kinds, in their order; those that `moments` has not are zero.
+    places : array of int (cell,)
+        Where in `moments` the cells are.
+    """
+    steps = next(iter(moments.values())).shape[0]
+    strength = np.empty((places.size, len(sources) * steps))
+    for n, source in enumerate(sources):
+        if source in moments:
+            rows_of_cells(strength, moments[source], places, n * steps)
+        else:
+            strength[:, n * steps:(n + 1) * steps] = 0.0
+    return strength
+
+
+@njit(cache=True, nogil=True)
+def rows_of_cells(strength: np.ndarray, moment: np.ndarray, cells: np.ndarray, first: int) -> None:
+    """Moments (time, cell) of some cells into the rows of ``strength (cell, series)``.
+
+    `first` is the series of the first date. A cache line of the result is filled at a time.
+    """
+    steps = moment.shape[0]
+    for part in range(0, cells.size, 512):
+        for start in range(0, steps, 8):
+            for c in range(part, min(part + 512, cells.size)):
+                for t in range(start, min(start + 8, steps)):
+                    strength[c, first + t] = moment[t, cells[c]]
+
+
+@njit(cache=True, nogil=True)
+def deposit_bins(lattice: np.ndarray, strength: np.ndarray, corners: np.ndarray, rule: np.ndarray,
+                 row: np.ndarray, column: np.ndarray, extra_rows: np.ndarray,
+                 extra_columns: np.ndarray, x_origin: float, y_origin: float, spacing: float,
+                 coefficients: np.ndarray, depths: np.ndarray, weights: np.ndarray) -> None:
+    """Add cells, in the order of `Bins`, onto the lattice.
+
+    Parameters
+    ----------
+    lattice : array (row, column * depth node * series)
+    strength : array (cell, series)
     corners, rule, row, column, extra_rows, extra_columns : array (cell, ...)
         See `Bins`.
     x_origin, y_origin, spacing, coefficients, depths, weights
@@ -155,27 +149,25 @@ def spread(lattice: np.ndarray, begin: np.ndarray, end: np.ndarray, strength: np
     most = 1
     for cell in range(rule.shape[0]):
         most = max(most, points_in(rule[cell]))
-    for strip in prange(begin.size):
-        start = begin[strip]
-        points, edge = np.empty((most, 4)), np.empty((3, 6))
-        while start < end[strip]:
-            stop, tall, wide = _chunk(start, end[strip], row, column, extra_rows, extra_columns,
-                                      width)
-            matrix = np.zeros((stop - start, tall * wide * nodes))
-            for c in range(start, stop):
-                count = sample_into(points, corners[c], rule[c], edge)
-                _fill_weights(matrix[c - start], points[:count], row[start], column[start], wide,
-                              x_origin, y_origin, spacing, coefficients, depths, weights)
-            product = np.dot(matrix.T, strength[start:stop]).reshape(tall, wide * nodes * series)
-            left = column[start] * nodes * series
-            for a in range(tall):
-                target = lattice[row[start] + a, left:left + wide * nodes * series]
-                for k in range(target.size):
-                    target[k] += product[a, k]
-            start = stop
+    points, edge = np.empty((most, 4)), np.empty((3, 6))
+    start, end = 0, row.size
+    while start < end:
+        stop, tall, wide = _chunk(start, end, row, column, extra_rows, extra_columns, width)
+        matrix = np.zeros((stop - start, tall * wide * nodes))
+        for c in range(start, stop):
+            count = sample_into(points, corners[c], rule[c], edge)
+            _fill_weights(matrix[c - start], points[:count], row[start], column[start], wide,
+                          x_origin, y_origin, spacing, coefficients, depths, weights)
+        product = np.dot(matrix.T, strength[start:stop]).reshape(tall, wide * nodes * series)
+        left = column[start] * nodes * series
+        for a in range(tall):
+            target = lattice[row[start] + a, left:left + wide * nodes * series]
+            for k in range(target.size):
+                target[k] += product[a, k]
+        start = stop
 
 
-@njit(cache=True)
+@njit(cache=True, nogil=True)
 def _chunk(start: int, end: int, row: np.ndarray, column: np.ndarray, extra_rows: np.ndarray,
            extra_columns: np.ndarray, width: int) -> tuple[int, int, int]:
     """Cells from `start` that one matrix holds, and the nodes it spans along y and x."""
@@ -190,7 +182,7 @@ def _chunk(start: int, end: int, row: np.ndarray, column: np.ndarray, extra_rows
     return stop, tall + width, wide + width
 
 
-@njit(cache=True, fastmath={"contract"}, error_model="numpy")
+@njit(cache=True, nogil=True, fastmath={"contract"}, error_model="numpy")
 def _fill_weights(matrix: np.ndarray, points: np.ndarray, row: int, column: int, wide: int,
                   x_origin: float, y_origin: float, spacing: float, coefficients: np.ndarray,
                   depths: np.ndarray, weights: np.ndarray) -> None:
@@ -211,8 +203,8 @@ def _fill_weights(matrix: np.ndarray, points: np.ndarray, row: int, column: int,
             continue
         place_x, place_y = (x - x_origin) / spacing, (y - y_origin) / spacing
         whole_x, whole_y = np.floor(place_x), np.floor(place_y)
-        _stencil(wx, coefficients, place_x - whole_x - 0.5)
-        _stencil(wy, coefficients, place_y - whole_y - 0.5)
+        stencil_into(wx, coefficients, place_x - whole_x - 0.5)
+        stencil_into(wy, coefficients, place_y - whole_y - 0.5)
         right, up = int(whole_x) - column, int(whole_y) - row
         for a in range(width):
             for b in range(width):
@@ -221,11 +213,3 @@ def _fill_weights(matrix: np.ndarray, points: np.ndarray, row: int, column: int,
                 for d in range(nodes):
                     matrix[start + d] += share * column_of[d]
         column_of[:] = 0.0
-
-
-@njit(cache=True, fastmath={"contract"})
-def _stencil(out: np.ndarray, coefficients: np.ndarray, offset: float) -> None:
-    out[:] = coefficients[0]
-    for k in range(1, coefficients.shape[0]):
-        for j in range(out.size):
-            out[j] = out[j] * offset + coefficients[k, j]

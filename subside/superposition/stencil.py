@@ -16,8 +16,9 @@ from dataclasses import dataclass
 from functools import cached_property, lru_cache
 
 import numpy as np
+from numba import njit
 
-__all__ = ["RATIOS", "WIDTHS", "Stencil", "coarsest"]
+__all__ = ["RATIOS", "WIDTHS", "Stencil", "coarsest", "stencil_into"]
 
 WIDTHS = (4, 6, 8, 10, 12)
 RATIOS = (5.0, 6.0, 7.0, 8.0, 9.0, 10.0, 11.0, 12.0, 14.0, 16.0, 20.0,
@@ -114,6 +115,15 @@ def coarsest(width: int, tolerance: float, gradient: bool) -> Stencil | None:
         if stencil.bounds[1 if gradient else 0] <= tolerance:
             return stencil
     return None
+
+
+@njit(cache=True, nogil=True, fastmath={"contract"})
+def stencil_into(out: np.ndarray, coefficients: np.ndarray, offset: float) -> None:
+    """Weights at one offset, from coefficients with powers first and nodes last."""
+    out[:] = coefficients[0]
+    for k in range(1, coefficients.shape[0]):
+        for j in range(out.size):
+            out[j] = out[j] * offset + coefficients[k, j]
 
 
 def _nodes(width: int) -> np.ndarray:

@@ -11,7 +11,6 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from scipy.interpolate import CubicSpline
 
 from subside.errors import InputError
 from subside.superposition.interface import Bodies, Targets
@@ -99,6 +98,8 @@ class RadialTable:
         """A table on given depths, and its error halfway between its radii at `check_depth`."""
         grid = np.linspace(0.0, top, radii + 1)
         values = _kernel(earth, source, grid, depths, gradient)
+        from scipy.interpolate import CubicSpline  # late: it takes longer than most runs need it
+
         spline = CubicSpline(grid, values, axis=2)
         # pieces in s = (place in the interval, 0 to 1), so that the step is not needed again
         scale = (grid[1] - grid[0]) ** np.arange(3, -1, -1)

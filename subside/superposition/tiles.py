@@ -20,7 +20,7 @@ from subside.earth.half_space import (
 )
 from subside.superposition.hexahedron import sample_cell
 
-__all__ = ["add_surface", "fill_points"]
+__all__ = ["add_surface", "fill_points", "fill_table"]
 
 _CHUNK = 64
 
@@ -65,7 +65,7 @@ def add_surface(result: np.ndarray, width: int, x: np.ndarray, y: np.ndarray, co
                     continue
                 points = sample_cell(corners[c], rule[c])
                 if depths.size > 0:
-                    _fill_table(tile, row, tx, ty, points, depths, weights, step, coefficients,
+                    fill_table(tile, row, tx, ty, points, depths, weights, step, coefficients,
                                 mixed)
                 else:
                     fill_points(tile, row, tx, ty, points, closure, poisson)
@@ -169,7 +169,7 @@ def _fill_box(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray, box: np.
 
 
 @njit(cache=True, fastmath=True, error_model="numpy")
-def _fill_table(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
+def fill_table(tile: np.ndarray, row: int, x: np.ndarray, y: np.ndarray,
                 points: np.ndarray, depths: np.ndarray, weights: np.ndarray, step: float,
                 coefficients: np.ndarray, mixed: np.ndarray) -> None:
     """A cell as weighted points, any earth model by its radial table.

@@ -1,80 +1,49 @@
-"""Seeded workloads of the benchmarks: rotated, inclined, faulted fields of invented cells.
+"""Makes the workloads W1 to W5: seeded, rotated, dipping, faulted fields of invented cells.
 
-`python tests/benchmarks/make_workloads.py W1` prints a summary; `make(name)` gives the arrays.
+    python tests/benchmarks/make_workloads.py W1 W2 --geometry boxes -o /tmp/w
+
+writes a folder for each (``/tmp/w/W2-boxes``) with a pressure grid and a scenario that `subside
+run` takes.
 """
 
 from __future__ import annotations
 
-import sys
-from collections.abc import Callable
-from dataclasses import dataclass
+from pathlib import Path
 
+import click
 import numpy as np
+from bench.field import Field
+from bench.workloads import WORKLOADS, write_workload
 
 from subside.superposition.interface import Bodies, Targets
 
-__all__ = ["WORKLOADS", "Workload", "field_of_cells", "make", "raster"]
-
-
-@dataclass(frozen=True)
-class Workload:
-    """Cells, their moments (time, cell) in m3, and targets."""
-
-    name: str
-    bodies: Bodies
-    moments: dict[str, np.ndarray]
-    targets: Targets
-
-    @property
-    def live_pairs(self) -> float:
-        """Pairs of a cell that loses volume and a target."""
-        return float(np.any(self.moments["contraction"], axis=0).sum()) * self.targets.x.size
+__all__ = ["field_of_cells", "raster"]
 
 
 def field_of_cells(columns: int, rows: int, layers: int, *, size: float, thickness: float,
                    depth: float, dip: float = 0.02, throw: float = 60.0, azimuth: float = 25.0,
                    active: float = 0.6, steps: int = 20,
                    seed: int = 1) -> tuple[Bodies, np.ndarray]:
-    """A rotated dome cut by one fault: cells of `size` m, layer by layer, and their moments.
+    """A small field about the origin for the tests: cells, and moments that are rougher.
 
     Returns
     -------
     Bodies, array (steps, cell)
         Cells outside the oval that holds the share `active` of the area lose no volume.
     """
+    field = Field(columns, rows, layers, size, thickness, depth, steps, dip, throw, azimuth,
+                  active, seed=seed)
     rng = np.random.default_rng(seed)
-    count = columns * rows * layers
-    layer, row, column = np.unravel_index(np.arange(count), (layers, rows, columns))
-    half_x, half_y = 0.5 * columns * size, 0.5 * rows * size
-    turn = np.radians(azimuth)
-    oval = np.sqrt(active * 4 / np.pi)
-
-    def corners(index: np.ndarray) -> np.ndarray:
-        out = np.empty((index.size, 8, 3))
-        behind = column[index] >= columns // 2
-        for n in range(8):
-            u = column[index] + (n % 4 in (1, 2))
-            v = row[index] + (n % 4 in (2, 3))
-            x, y = u * size - half_x, v * size - half_y
-            height = 0.05 * depth * (1 - (x / half_x) ** 2 - (y / half_y) ** 2)
-            z = (depth + dip * x - height + throw * behind
-                 + (layer[index] + (n >= 4)) * thickness)
-            out[:, n, 0] = x * np.cos(turn) + y * np.sin(turn)
-            out[:, n, 1] = -x * np.sin(turn) + y * np.cos(turn)
-            out[:, n, 2] = z
-        return out
-
-    x = (column + 0.5) * size / half_x - 1
-    y = (row + 0.5) * size / half_y - 1
-    inside = x**2 + y**2 < oval**2
-    strain = 1e-3 * np.exp(-(x**2 + y**2)) * rng.uniform(0.3, 1.0, layers)[layer]
-    strain *= inside * rng.uniform(0.5, 1.0, count)
+    layer = np.repeat(np.arange(layers), rows * columns)
+    v, u = field.place
+    far = np.tile((v[:, None] ** 2 + u[None, :] ** 2).ravel(), layers)
+    strain = 1e-3 * np.exp(-far) * rng.uniform(0.3, 1.0, layers)[layer]
+    strain *= np.tile(field.is_active.ravel(), layers) * rng.uniform(0.5, 1.0, field.count)
+    speed = rng.uniform(0.5, 3.0, layers)[layer]
     time = np.linspace(0.0, 1.0, steps + 1)[1:]
-    speed = rng.uniform(0.5, 3.0, layers)[layer].astype(np.float64)
-    moments = np.empty((steps, count))
-    for step, t in enumerate(time):
-        moments[step] = strain * size * size * thickness * (1 - np.exp(-speed * t))
-    return Bodies(count, corners), moments
+    moments = strain * size * size * thickness * (1 - np.exp(-speed * time[:, None]))
+    return Bodies(field.count, lambda index: field.corners(
+        *np.unravel_index(index, field.shape))), moments
 
 
 def raster(pixels: int, half: float) -> Targets:
@@ -84,31 +53,23 @@ def raster(pixels: int, half: float) -> Targets:
     return Targets(x.ravel(), y.ravel(), np.zeros(x.size))
 
 
-def _workload(name: str, targets: Callable[[], Targets], **field: float) -> Workload:
-    bodies, moments = field_of_cells(**field)  # type: ignore[arg-type]
-    return Workload(name, bodies, {"contraction": moments}, targets())
-
-
-WORKLOADS: dict[str, Callable[[], Workload]] = {
-    "W1": lambda: _workload("W1", lambda: raster(256, 16e3), columns=100, rows=100, layers=10,
-                            size=150.0, thickness=8.0, depth=2000.0, active=1.3, steps=20),
-    "W2": lambda: _workload("W2", lambda: raster(512, 20e3), columns=200, rows=200, layers=50,
-                            size=100.0, thickness=4.0, depth=2000.0, active=0.6, steps=60),
-    "W4": lambda: _workload("W4", lambda: raster(512, 14e3), columns=200, rows=200, layers=5,
-                            size=100.0, thickness=5.0, depth=300.0, throw=10.0, dip=0.003,
-                            active=0.6, steps=60),
-}
-"""By name, smallest first."""
-
-
-def make(name: str) -> Workload:
-    """One of `WORKLOADS`."""
-    return WORKLOADS[name]()
+@click.command()
+@click.argument("names", nargs=-1, type=click.Choice(list(WORKLOADS)))
+@click.option("--geometry", default="boxes", show_default=True,
+              type=click.Choice(["boxes", "corners", "leaning"]), help="How cells are stored.")
+@click.option("--date-chunks", is_flag=True, help="One date in a storage chunk.")
+@click.option("--cells-times", default=1, show_default=True, type=click.Choice([1, 4, 16]),
+              help="So many times the cells, in the same field.")
+@click.option("--seed", default=1, show_default=True)
+@click.option("-o", "--output", default=Path("/tmp/w"), show_default=True,
+              type=click.Path(path_type=Path, file_okay=False))
+def main(names: tuple[str, ...], geometry: str, date_chunks: bool, cells_times: int, seed: int,
+         output: Path) -> None:
+    """Write workloads as pressure grids with scenarios."""
+    for name in names or ("W1",):
+        write_workload(WORKLOADS[name], output, geometry=geometry, date_chunks=date_chunks,
+                       cells_times=cells_times, seed=seed)
 
 
 if __name__ == "__main__":
-    for chosen in sys.argv[1:] or WORKLOADS:
-        load = make(chosen)
-        live = int(np.any(load.moments["contraction"], axis=0).sum())
-        print(f"{chosen}: {load.bodies.count} cells, {live} losing volume, {load.targets.x.size} "
-              f"targets, {load.moments['contraction'].shape[0]} steps")
+    main()

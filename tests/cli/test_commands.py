@@ -13,6 +13,7 @@ from invented_fields import X0, Y0
 from small_field import append, edit, files_of
 
 import subside as sd
+from subside.errors import InputError
 from subside.names import CAUTIONS
 
 MAP = (f'[map]\nspacing = "500 m"\nbounds = [{X0 - 1000}, {Y0 - 1000}, {X0 + 1000}, '
@@ -52,6 +53,21 @@ print(sorted(m for m in {HEAVY!r} if m in sys.modules))
     assert ended.stdout == "[]\n"
 
 
+def test_a_run_without_figures_loads_neither_pictures_nor_clusters(field):
+    script = """
+import sys
+from subside.cli.main import main
+try:
+    main(["run", sys.argv[1], "--no-figures", "--quiet"])
+except SystemExit as ended:
+    assert ended.code == 0
+print(sorted({"matplotlib", "contourpy", "PIL", "rasterio", "distributed"} & set(sys.modules)))
+"""
+    ended = subprocess.run([sys.executable, "-c", script, str(field / "scenario.toml")],
+                           capture_output=True, text=True, check=False)
+    assert (ended.stdout, ended.stderr) == ("[]\n", "")
+
+
 @pytest.mark.parametrize(("arguments", "words"), [
     (["rnu"], ["no command is called 'rnu'", "Did you mean 'run'?", "subside --help"]),
     (["run"], ["Missing argument 'SCENARIO'", "subside run --help"]),
@@ -77,7 +93,7 @@ def test_wrong_words_on_the_command_line(arguments, words, subside, tmp_path, mo
 
 def test_what_cannot_be_done_is_3_and_said_before_the_work(field, subside, monkeypatch):
     (field / "plain").write_text("a file\n")
-    monkeypatch.setattr("subside.pipeline._compact", None)  # would fail with another message
+    monkeypatch.setattr("subside.pipeline.prepare", None)  # would fail with another message
     ended = subside("run", field / "scenario.toml", "-o", field / "plain" / "deeper" / "bowl.nc")
     assert ended.code == 3
     assert "bowl.nc' cannot be written" in ended.message
@@ -100,7 +116,7 @@ def test_memory_is_3(field, subside, monkeypatch):
     def gone(*_: object) -> None:
         raise MemoryError("8 GB")
 
-    monkeypatch.setattr("subside.pipeline._superpose", gone)
+    monkeypatch.setattr("subside.pipeline._Run.result", gone)
     ended = subside("run", field / "scenario.toml")
     assert ended.code == 3
     assert "memory ran out (8 GB)" in ended.message
@@ -111,7 +127,7 @@ def test_an_unforeseen_error_is_3_and_says_whose_it_is(field, subside, monkeypat
     def broken(*_: object) -> None:
         raise ZeroDivisionError("division by zero")
 
-    monkeypatch.setattr("subside.pipeline._superpose", broken)
+    monkeypatch.setattr("subside.pipeline._Run.result", broken)
     ended = subside("run", field / "scenario.toml")
     assert ended.code == 3
     assert "unforeseen ZeroDivisionError" in ended.message
@@ -136,7 +152,7 @@ def test_an_interrupt_leaves_what_was_there(field, subside, monkeypatch, old):
     if old:
         (field / "scenario.nc").write_bytes(old)
     before = files_of(field)
-    monkeypatch.setattr("subside.export.netcdf._write_variable", stop)
+    monkeypatch.setattr("subside.export.writer.ResultWriter._end", stop)
     ended = subside("run", field / "scenario.toml", "--overwrite", "--no-figures")
     assert ended.code == 3
     assert "stopped by the user" in ended.err
@@ -204,6 +220,67 @@ def test_check_as_json_and_as_text(field, subside):
     text = subside("check", field / "scenario.toml").out
     assert "small field: in order" in text and "GB" in text
     assert files_of(field) == before
+
+
+def test_check_tells_the_memory_it_may_take(field, subside):
+    facts = json.loads(subside("check", field / "scenario.toml", "--json", "--memory", "2GB").out)
+    assert facts["memory_allowed_bytes"] == 2_000_000_000
+    assert "2.00 GB allowed" in subside(
+        "check", field / "scenario.toml", "--memory", "2 GB").out
+
+
+def test_limits_of_a_run_reach_it(field, subside, monkeypatch):
+    """What is left out is left to the run."""
+    taken = []
+
+    def run(*_: object, **options: object) -> None:
+        taken.append([options[word] for word in ("memory", "workers", "cluster")])
+        raise InputError("enough")
+
+    monkeypatch.setattr("subside.pipeline.run", run)
+    path = field / "scenario.toml"
+    assert subside("run", path).message == "enough"
+    subside("run", path, "--memory", "1.5 GB", "--workers", 3, "--cluster", "tcp://10.0.0.5:8786")
+    subside("run", path, "--cluster", "local")
+    assert taken == [[None, None, None], [1_500_000_000, 3, "tcp://10.0.0.5:8786"],
+                     [None, None, "local"]]
+
+
+@pytest.mark.parametrize(("option", "value", "words"), [
+    ("--memory", "2", ["--memory = '2'", 'for example "2 GB"']),
+    ("--memory", "-1 GB", ["above zero"]),
+    ("--memory", "2 bar", ["--memory = '2 bar'", "GiB"]),
+    ("--workers", "0", ["--workers = 0", "from 1 to", "leave it out"]),
+    ("--workers", "-3", ["--workers = -3"]),
+    ("--workers", "many", ["--workers", "'many'", "subside run --help"]),
+    ("--cluster", "", ["--cluster = ''", "'local'", "tcp://10.0.0.5:8786"]),
+    ("--cluster", "10.0.0.5", ["--cluster = '10.0.0.5'", "HOST:PORT"]),
+    ("--cluster", "tcp://host:99999", ["--cluster = 'tcp://host:99999'"]),
+    ("--cluster", "Local", ["'local'"]),
+])
+def test_limits_that_make_no_sense(field, subside, option, value, words):
+    before = files_of(field)
+    ended = subside("run", field / "scenario.toml", option, value)
+    assert (ended.code, ended.out) == (2, "")
+    for word in words:
+        assert word in ended.message
+    assert files_of(field) == before
+
+
+def test_the_summary_reads_no_map(field, subside, monkeypatch):
+    """A result may be larger than the memory: the summary must leave its maps in the file."""
+    from subside.cli.summary import facts_of, print_summary
+    from subside.export.netcdf import open_result
+    from subside.names import RESULT_VARIABLES
+
+    append(field, MAP)
+    assert subside("run", field / "scenario.toml", "--no-figures").code == 0
+    result = open_result(field / "scenario.nc")
+    maps = [n for n, v in RESULT_VARIABLES.items() if "y" in v.dims and n in result]
+    facts_of(result)
+    print_summary(result, [])
+    assert "subsidence" in maps
+    assert not [name for name in maps if result[name].variable._in_memory]
 
 
 def test_inspect_as_json_and_as_text(field, subside):

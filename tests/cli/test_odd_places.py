@@ -58,13 +58,12 @@ def test_a_scenario_with_a_byte_order_mark_is_read(field, subside):
 @pytest.mark.skipif(sys.platform == "win32", reason="signals of POSIX")
 def test_a_polite_kill_leaves_nothing(field):
     before = files_of(field)
-    code = ("import sys, time\nimport subside.result_file as r\n"
-            "from subside.export import atomic\n"
-            "def slow(result, path):\n"
-            "    with atomic.whole(path) as part:\n"
-            "        part.write_text('half')\n        print('writing', flush=True)\n"
-            "        time.sleep(60)\n"
-            "r.write_result = slow\n"
+    code = ("import sys, time\n"
+            "from subside.export.writer import ResultWriter\n"
+            "def slow(writer, result):\n"
+            "    print('writing', flush=True)\n"
+            "    time.sleep(60)\n"
+            "ResultWriter._end = slow\n"
             "from subside.cli.main import main\n"
             "main(['run', sys.argv[1], '--no-figures'])\n")
     process = subprocess.Popen([sys.executable, "-c", code, str(field / "scenario.toml")],

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from typing import Any
 
-import numba
 import numpy as np
 import pytest
 from hypothesis import example, given, settings
@@ -14,6 +13,7 @@ from scipy.integrate import solve_ivp
 
 from subside.api import InputError
 from subside.compaction.isotach import Isotach
+from subside.compaction.isotach_step import mild_steps, other_steps
 
 
 def stiff_solver(years: Any, drop: Any, rock: Any) -> np.ndarray:
@@ -210,15 +210,50 @@ def test_previous_stress_rise_delays_the_virgin_line() -> None:
     assert strain[1:] == pytest.approx(other[2:] - other[1], rel=1e-6)
 
 
-def test_threads_change_nothing() -> None:
-    years = np.linspace(0, 30, 7)
-    drop = np.linspace(0, 1, 7)[:, None] * np.linspace(-50, 300, 4000) * BAR
-    one = Isotach().strain(history_of(years, drop), rock_of(Isotach))
-    numba.set_num_threads(min(2, numba.config.NUMBA_NUM_THREADS))
-    two = Isotach().strain(history_of(years, drop), rock_of(Isotach))
-    numba.set_num_threads(1)
-    assert (one == two).all()
-    assert (np.diff(one[-1]) > 0).all()
+@pytest.mark.parametrize("b", [0.005, 0.02, 0.1])
+def test_a_mild_step_is_any_step(b: float) -> None:
+    """The series for many cells against the step of one cell, both ways of change and at rest."""
+    rng = np.random.default_rng(3)
+    n = 4099
+    creep = 10.0 ** rng.uniform(-3, 1, n)  # bar/year
+    y, kappa = np.log(3e-4 / creep), rng.uniform(0, 0.7, n)
+    stress0 = rng.uniform(100, 500, n) * BAR
+    stress1 = stress0 * (1 + rng.choice([-0.02, 0.0, 0.001, 0.03], n) * rng.uniform(0, 1, n))
+    change = (np.full(n, b), np.full(n, 3e-4 * BAR / YEAR), stress0, stress1, YEAR)
+    mild, single = np.empty(n), np.full(n, np.nan)
+    mild_steps(y, kappa, *change, mild)
+    other_steps(y, kappa, *change, single)
+    is_mild = ~np.isnan(mild)
+    assert is_mild.mean() > {0.005: 0.2, 0.02: 0.7, 0.1: 0.95}[b]
+    # of ln z, so that of the strain from zero stress b times less; no more than the series leave
+    # out, as both take the same substep
+    assert mild[is_mild] == pytest.approx(single[is_mild], rel=0, abs=2e-12)
+    # cells left out of the first are done by the second, and only those
+    both = mild.copy()
+    other_steps(y, kappa, *change, both)
+    assert (both == np.where(is_mild, mild, single)).all()
+    # a cell is itself wherever it stands among the others
+    for place in (0, 1, 2000, n - 1):
+        one = [v[place:place + 1] if isinstance(v, np.ndarray) else v for v in (y, kappa, *change)]
+        alone = np.empty(1)
+        mild_steps(*one, alone)
+        np.testing.assert_array_equal(alone[0], mild[place])
+
+
+def test_harsh_steps_are_not_mild() -> None:
+    """Out of the series' range, or with an error above the tolerance: never a wrong number."""
+    rng = np.random.default_rng(4)
+    n = 20_000
+    args = (rng.uniform(-40, 5, n), rng.uniform(0, 0.99, n), 10 ** rng.uniform(-3, -0.7, n),
+            10.0 ** rng.uniform(-9, 1, n) * BAR / YEAR, np.full(n, 200 * BAR),
+            200 * BAR * 10 ** rng.uniform(-0.3, 0.3, n), YEAR)
+    mild, single = np.empty(n), np.full(n, np.nan)
+    mild_steps(*args, mild)
+    other_steps(*args, single)
+    is_mild = ~np.isnan(mild)
+    assert 0.02 < is_mild.mean() < 0.9
+    assert args[2][is_mild] * mild[is_mild] == pytest.approx(
+        args[2][is_mild] * single[is_mild], rel=0, abs=2e-10)
 
 
 def test_no_stress_left_is_an_error_with_the_cell() -> None:

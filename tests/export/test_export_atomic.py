@@ -80,12 +80,12 @@ def test_killed_in_mid_write_leaves_no_result(tmp_path: Path, sign: signal.Signa
         "import sys, time\n"
         "from made_up_results import control_result\n"
         "from subside.export import netcdf\n"
-        "write = netcdf._write_variable\n"
-        "def stop_at_tilt(file, name, *rest):\n"
+        "put = netcdf.ResultWriter.put\n"
+        "def stop_at_tilt(self, name, *rest):\n"
         "    if name == 'tilt':\n"
-        "        file.sync(); print('half', flush=True); time.sleep(60)\n"
-        "    write(file, name, *rest)\n"
-        "netcdf._write_variable = stop_at_tilt\n"
+        "        self.flush(); print('half', flush=True); time.sleep(60)\n"
+        "    put(self, name, *rest)\n"
+        "netcdf.ResultWriter.put = stop_at_tilt\n"
         "netcdf.write_result(control_result(32631), sys.argv[1])\n"
     )
     paths = os.pathsep.join([str(Path(__file__).parent), *filter(None, sys.path)])
@@ -105,7 +105,7 @@ def test_killed_in_mid_write_leaves_no_result(tmp_path: Path, sign: signal.Signa
 
 
 @pytest.mark.skipif(os.name != "posix", reason="limits of POSIX")
-@pytest.mark.parametrize("kind", ["netcdf", "geotiff"])
+@pytest.mark.parametrize("kind", ["netcdf", "netcdf without h5py", "geotiff"])
 def test_a_disk_that_fills_up_gives_a_clear_error_and_no_file(tmp_path: Path, kind: str) -> None:
     # A limit on the size of files stands in for the full disk: writing fails in the middle alike.
     script = (
@@ -115,6 +115,7 @@ def test_a_disk_that_fills_up_gives_a_clear_error_and_no_file(tmp_path: Path, ki
         "from made_up_results import control_result\n"
         "from subside.errors import CannotDo\n"
         "from subside.export.geotiff import GeoTiff\n"
+        "from subside.export import chunks\n"
         "from subside.export.netcdf import write_result\n"
         "result = control_result(32631, ny=300, nx=300)\n"
         "noise = np.random.default_rng(0).normal(size=result['subsidence'].shape)\n"
@@ -122,7 +123,9 @@ def test_a_disk_that_fills_up_gives_a_clear_error_and_no_file(tmp_path: Path, ki
         "signal.signal(signal.SIGXFSZ, signal.SIG_IGN)\n"
         "resource.setrlimit(resource.RLIMIT_FSIZE, (300_000, resource.RLIM_INFINITY))\n"
         "try:\n"
-        "    if sys.argv[2] == 'netcdf':\n"
+        "    if 'without' in sys.argv[2]:\n"
+        "        chunks.h5py = None\n"
+        "    if 'netcdf' in sys.argv[2]:\n"
         "        write_result(result, Path(sys.argv[1]) / 'bowl.nc')\n"
         "    else:\n"
         "        GeoTiff().export(result, Path(sys.argv[1]), False, ('subsidence',))\n"

@@ -360,11 +360,13 @@ def test_lists_for_numbers(tmp_path):
 
 
 def test_a_reader_that_forgot_something(tmp_path):
+    from subside.grid import HeldStream
     from subside.grid.checks import Findings, run_checks
 
     cells = open_grid(corner_draft().write(tmp_path / "grid.nc"))
     with pytest.raises(InputError, match=r"returned nothing for 'volume'.*tell its author"):
-        run_checks(cells.drop_vars("volume"), 0.0, Findings("grid.xyz"))
+        run_checks(cells.drop_vars("volume"), 0.0, Findings("grid.xyz"),
+                   HeldStream(cells["pressure"].values))
 
 
 def test_two_coordinate_systems(tmp_path):

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 import xarray as xr
 
-from subside.quantities.bowl import bowl_volume, extremes, volume_above
+from subside.quantities.bowl import extremes, volumes
 from subside.quantities.builtin import (
     HorizontalStrainMajor,
     HorizontalStrainMinor,
@@ -33,20 +33,24 @@ def test_extremes_where_everything_rises() -> None:
     assert (found["max_uplift"][0], found["max_uplift_x"][0]) == (0.2, 6.0)
 
 
-def test_bowl_volume_adds_each_source_at_its_own_ratio() -> None:
-    """Nucleus 2(1-nu), crack 1: 2 m3 and 3 m3 of contraction, 1 m3 and -1 m3 of closure."""
-    moments = {"contraction": np.array([[0.0, 0.0], [2.0, 3.0]]),
-               "closure": np.array([[0.0, 0.0], [1.0, -1.0]])}
-    ratio = {"contraction": np.array([1.5, 1.2]), "closure": np.array([1.0, 0.5])}
-    assert bowl_volume(moments, ratio).tolist() == pytest.approx([0.0, 3.0 + 3.6 + 1.0 - 0.5])
-
-
 def test_volume_inside_the_one_centimetre_contour() -> None:
-    """Pixels of 9.999 mm, -20 mm and 0 stay out; exactly 1 cm is in."""
-    values = np.array([[[0.0, 0.0, 0.0], [0.0, 0.0, 0.0]],
-                       [[0.01, 0.009999, 0.5], [-0.02, 0.0, 0.03]]])
-    assert volume_above(values, 100.0).tolist() == pytest.approx([0.0, 54.0])
-    assert volume_above(values, 100.0, threshold=0.1).tolist() == pytest.approx([0.0, 50.0])
+    """Pixels of 9.999 mm, -20 mm and 0 stay out; exactly 1 cm is in. All count for the whole map.
+
+    By hand, pixels of 100 m2: 0.01 + 0.5 + 0.03 m and 0.01 + 0.009999 + 0.5 - 0.02 + 0.03 m.
+    """
+    values = np.array([[0.0, 0.0, 0.0, 0.0, 0.0, 0.0], [0.01, 0.009999, 0.5, -0.02, 0.0, 0.03]])
+    every, deep = volumes(values, 100.0)
+    assert deep.tolist() == pytest.approx([0.0, 54.0])
+    assert every.tolist() == pytest.approx([0.0, 52.9999])
+    assert volumes(values, 100.0, threshold=0.1)[1].tolist() == pytest.approx([0.0, 50.0])
+
+
+def test_volumes_of_a_slice_of_a_larger_array() -> None:
+    values = np.random.default_rng(0).normal(size=(4, 6, 70))
+    every, deep = volumes(values[:, 1:5, ::2].reshape(4, -1), 2.0, 0.5)
+    part = values[:, 1:5, ::2]
+    assert every == pytest.approx(2.0 * part.sum(axis=(1, 2)))
+    assert deep == pytest.approx(2.0 * np.where(part >= 0.5, part, 0.0).sum(axis=(1, 2)))
 
 
 DAY = 86400.0

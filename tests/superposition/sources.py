@@ -18,7 +18,8 @@ EARTH = HalfSpace(poisson_ratio=0.25)
 def boxes(*rows: Any) -> Bodies:
     """x, y, top, bottom, dx, dy, azimuth."""
     table = np.asarray(rows, dtype=float)
-    return Bodies(len(table), lambda index: corners_of_boxes(*table[index].T), table)
+    return Bodies(len(table), lambda index: corners_of_boxes(*table[index].T),
+                  lambda index: table[index])
 
 
 def hexahedra(corners: np.ndarray) -> Bodies:

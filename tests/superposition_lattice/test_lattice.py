@@ -6,11 +6,12 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from lattice_cases import compare, error_of, raster, small_field, wells
+from lattice_cases import compare, error_of, joined, raster, small_field, wells
 
 from subside.earth_models import HalfSpace, RigidBasement
 from subside.errors import InputError
-from subside.superposition import lattice as solver_module
+from subside.superposition import band_pass, summation
+from subside.superposition import lattice as lattice_module
 from subside.superposition.direct import Direct
 from subside.superposition.interface import Bodies, Targets
 from subside.superposition.lattice import Lattice
@@ -71,25 +72,10 @@ def test_moving_everything_changes_nothing(east: float, north: float) -> None:
     assert error_of(there, here) < 1e-10
 
 
-def _joined(fields: list[tuple[Bodies, dict[str, np.ndarray]]]) -> tuple[Bodies, dict]:
-    edges = np.cumsum([0] + [bodies.count for bodies, _ in fields])
-
-    def corners(index: np.ndarray) -> np.ndarray:
-        out = np.empty((index.size, 8, 3))
-        for n, (bodies, _) in enumerate(fields):
-            mine = (index >= edges[n]) & (index < edges[n + 1])
-            out[mine] = bodies.corners(index[mine] - edges[n])
-        return out
-
-    moments = {source: np.concatenate([m[source] for _, m in fields], axis=1)
-               for source in fields[0][1]}
-    return Bodies(int(edges[-1]), corners), moments
-
-
 def test_depths_from_300_m_to_4_km() -> None:
     fields = [small_field(depth=depth, size=max(depth / 8, 100.0), seed=n, columns=8, rows=6)
               for n, depth in enumerate((300.0, 600.0, 1200.0, 2400.0, 4000.0))]
-    bodies, moments = _joined(fields)
+    bodies, moments = joined(fields)
     error, solver = compare(bodies, moments, raster(30, 6000.0), EARTH, 1e-5)
     assert error <= 1e-5
     assert len(solver.notes) > 2, "several bands"
@@ -98,7 +84,7 @@ def test_depths_from_300_m_to_4_km() -> None:
 def test_one_cell_at_80_m() -> None:
     lone = small_field(depth=84.0, columns=1, rows=1, layers=1, size=30.0, thickness=2.0, throw=0.0)
     lone = (lone[0], {source: 50 * moment for source, moment in lone[1].items()})
-    bodies, moments = _joined([small_field(), lone])
+    bodies, moments = joined([small_field(), lone])
     error, solver = compare(bodies, moments, raster(41, 5000.0), EARTH, 1e-5)
     assert error <= 1e-5
     spacing = [float(note.split("spacing ")[1].split(" m")[0]) for note in solver.notes
@@ -157,14 +143,11 @@ def test_the_order_of_cells_and_targets_does_not_matter() -> None:
 
 
 def test_steps_do_not_know_of_each_other(monkeypatch: pytest.MonkeyPatch) -> None:
-    from subside.superposition import band_pass
-
     bodies, moments = small_field(steps=7)
     targets = raster(15, 5000.0)
     whole = Lattice(forced=True).solve(bodies, moments, targets, EARTH, tolerance=1e-5)
-    monkeypatch.setattr(band_pass, "_LATTICE_BYTES", 3e5)
-    monkeypatch.setattr(band_pass, "_SPECTRA_BYTES", 1e5)
-    monkeypatch.setattr(band_pass, "_CELLS_AT_ONCE", 50)
+    monkeypatch.setattr(band_pass, "_SPECTRA", 1.2e4)  # two dates at a time
+    monkeypatch.setattr(lattice_module, "_PIECE", 50)
     blocks = Lattice(forced=True).solve(bodies, moments, targets, EARTH, tolerance=1e-5)
     assert error_of(blocks, whole) < 1e-13
 
@@ -194,7 +177,8 @@ def test_a_box_too_shallow_to_sample_is_left_to_the_exact_integral() -> None:
                                                               400.0, 20.0]])
     from subside.grid.geometry import corners_of_boxes
 
-    bodies = Bodies(2, lambda index: corners_of_boxes(*box[index].T), box)
+    bodies = Bodies(2, lambda index: corners_of_boxes(*box[index].T),
+                    lambda index: box[index].copy())
     moments = {"contraction": np.array([[1.0, 400.0]])}
     error, solver = compare(bodies, moments, raster(20, 2000.0), EARTH, 1e-4)
     assert error <= 1e-4
@@ -228,7 +212,7 @@ def _broken(factor: float, times: int):
 
 
 def test_the_check_catches_a_broken_stencil_and_falls_back(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(solver_module, "coarsest", _broken(1.002, 1000))
+    monkeypatch.setattr(summation, "coarsest", _broken(1.002, 1000))
     bodies, moments = small_field()
     targets = raster(24, 5000.0)
     solver = Lattice(forced=True)
@@ -236,11 +220,12 @@ def test_the_check_catches_a_broken_stencil_and_falls_back(monkeypatch: pytest.M
     truth = Direct().solve(bodies, moments, targets, EARTH, tolerance=1e-6)
     assert error_of(field, truth) <= 1e-4
     assert sum("refined" in note for note in solver.notes) == 3
-    assert solver.notes[-2:] == ["no lattice kept the tolerance", "plain sum for all cells"]
+    assert solver.notes[-1] == "plain sum over all cells"
+    assert solver.name == "direct"
 
 
 def test_a_failed_check_refines_first(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(solver_module, "coarsest", _broken(1.002, 5))
+    monkeypatch.setattr(summation, "coarsest", _broken(1.002, 5))
     bodies, moments = small_field()
     solver = Lattice(forced=True)
     solver.solve(bodies, moments, raster(24, 5000.0), EARTH, tolerance=1e-3)
@@ -250,9 +235,9 @@ def test_a_failed_check_refines_first(monkeypatch: pytest.MonkeyPatch) -> None:
 
 
 def test_a_result_that_is_not_a_number_fails_the_check(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(solver_module, "coarsest", _broken(float("nan"), 1000))
+    monkeypatch.setattr(summation, "coarsest", _broken(float("nan"), 1000))
     bodies, moments = small_field(steps=1)
     solver = Lattice(forced=True)
     field = solver.solve(bodies, moments, raster(20, 5000.0), EARTH, tolerance=1e-4)
     assert all(np.isfinite(values).all() for values in field.values())
-    assert solver.notes[-1] == "plain sum for all cells"
+    assert solver.notes[-1] == "plain sum over all cells"

@@ -2,24 +2,27 @@
 
 from __future__ import annotations
 
+import functools
+
 import numpy as np
 import pytest
-from lattice_cases import raster, small_field, wells
+from lattice_cases import pillar_field, raster, small_field, wells
 from scipy.fft import fft2
 
 from subside.earth_models import HalfSpace, RigidBasement
 from subside.superposition.bands import Task, depth_nodes_guess, make_bands
+from subside.superposition.census import take_census
 from subside.superposition.depth_nodes import depth_nodes
-from subside.superposition.direct import Direct
+from subside.superposition.direct import Direct, losing_volume
 from subside.superposition.frame import Axis, Frame, chebyshev
 from subside.superposition.hexahedron import sample_cell
 from subside.superposition.interface import Bodies
 from subside.superposition.kernel_table import ODD, kernel_spectra
 from subside.superposition.referee import plain_sum
 from subside.superposition.resample import Raster
-from subside.superposition.sampled import SampledCells, losing_volume
+from subside.superposition.rule import surface_rule
 from subside.superposition.sampling import points_in, sample_into
-from subside.superposition.spread import Bins, extent_of_points, gather, spread
+from subside.superposition.spread import Bins, deposit_bins, extent_of_points, rows_of_cells
 from subside.superposition.stencil import Stencil
 
 EARTH = HalfSpace(poisson_ratio=0.25)
@@ -67,31 +70,41 @@ def test_fast_sampling_equals_the_plain_one() -> None:
 def test_spreading_keeps_volume_and_place() -> None:
     """Constants are exact, and so is the sum of all that was spread: m3 are not lost or made."""
     bodies, moments = small_field()
-    cells = SampledCells.of(bodies, np.arange(bodies.count), 1e-6, False)
+    corners = bodies.corners(np.arange(bodies.count))
+    rule = surface_rule(corners, 1e-6, False)
+    extent = extent_of_points(corners, rule)
     stencil = Stencil.of(6, 10.0)
-    spacing = cells.top.min() / 10.0
-    x, y = (Axis.around((cells.extent[:, n].min(), cells.extent[:, n + 1].max()), (0.0, 1.0),
-                        spacing, 6) for n in (0, 2))
-    depths, weights = chebyshev(cells.top.min(), cells.bottom.max(), 5)
-    bins = Bins.of(cells.extent, x, y, 6)
+    spacing = extent[:, 4].min() / 10.0
+    x, y = (Axis.around((extent[:, n].min(), extent[:, n + 1].max()), (0.0, 1.0), spacing, 6)
+            for n in (0, 2))
+    depths, weights = chebyshev(extent[:, 4].min(), extent[:, 5].max(), 5)
+    bins = Bins.of(extent, x, y)
+    assert np.array_equal(np.sort(bins.order), np.arange(bodies.count))
     lattice = np.zeros((y.sources, x.sources * 5 * 2 * 3))
-    for strips in bins.turns(100):
-        for colour_mate in strips[1:] - strips[:-1]:
-            assert colour_mate % 2 == 0
-        part = np.concatenate([np.arange(bins.strips[s], bins.strips[s + 1]) for s in strips])
-        size = np.diff(bins.strips)[strips]
-        end = np.cumsum(size)
-        chosen = bins.order[part]
-        strength = np.empty((chosen.size, 6))
-        rank = np.argsort(chosen)
-        gather(strength, tuple(moments.values()), chosen[rank], rank)
-        spread(lattice, end - size, end, strength, bodies.corners(chosen), cells.rule[chosen],
-               bins.row[part], bins.column[part], bins.extra_rows[part], bins.extra_columns[part],
-               x.origin, y.origin, spacing, np.ascontiguousarray(stencil.coefficients.T), depths,
-               weights)
+    strength = np.empty((bodies.count, 6))
+    for n, moment in enumerate(moments.values()):
+        rows_of_cells(strength, moment, bins.order, 3 * n)
+    deposit_bins(lattice, strength, corners[bins.order], rule[bins.order], bins.row, bins.column,
+                 bins.extra_rows, bins.extra_columns, x.origin, y.origin, spacing,
+                 np.ascontiguousarray(stencil.coefficients.T), depths, weights)
     total = lattice.reshape(y.sources, x.sources, 5, 2, 3).sum(axis=(0, 1, 2))
     expected = np.stack([moment.sum(axis=1) for moment in moments.values()])
     assert total == pytest.approx(expected, rel=1e-11)
+
+
+def test_moments_of_cells_are_put_in_rows() -> None:
+    moment = np.random.default_rng(1).normal(size=(19, 1400))  # not a multiple of 8, nor of 512
+    cells = np.random.default_rng(2).permutation(1400)[:1100]
+    strength = np.full((1100, 25), np.nan)
+    rows_of_cells(strength, moment, cells, 4)
+    assert np.array_equal(strength[:, 4:23], moment[:, cells].T)
+    assert np.isnan(strength[:, :4]).all() and np.isnan(strength[:, 23:]).all()
+
+
+def test_losing_volume_at_any_date() -> None:
+    moment, other = np.zeros((3, 9000)), np.zeros((3, 9000))
+    moment[2, 8999], moment[0, 4], other[1, 4500] = -1.0, 1e-300, 2.0
+    assert np.flatnonzero(losing_volume(moment, other)).tolist() == [4, 4500, 8999]
 
 
 @pytest.mark.parametrize("source", ["contraction", "closure"])
@@ -138,22 +151,53 @@ def test_depth_nodes_keep_their_error(earth: object) -> None:
     assert depth_nodes_guess(500.0, 500.0, 1e-6) == 1
 
 
+@pytest.mark.parametrize("boxes", [False, True])
+def test_the_census_counts_every_cell_once(boxes: bool) -> None:
+    bodies, _ = pillar_field(boxes=boxes, columns=9, rows=8)
+    live = np.random.default_rng(0).uniform(size=bodies.count) < 0.8
+    census = take_census(bodies, 1e-6, False, live)
+    corners = bodies.corners(np.flatnonzero(live))
+    assert ((census.number >= 0) == live).all()
+    assert census.count == live.sum()
+    assert census.points == surface_rule(corners, 1e-6, False).prod(axis=1).sum()
+    for group in census.groups:
+        mine = bodies.corners(np.flatnonzero(census.number == group.classes[0]))
+        assert group.count == mine.shape[0]
+        assert group.box == pytest.approx([mine[..., 0].min(), mine[..., 0].max(),
+                                           mine[..., 1].min(), mine[..., 1].max()], abs=1e-9)
+        assert (group.top, group.bottom) == pytest.approx((mine[..., 2].min(), mine[..., 2].max()))
+        assert group.widths == pytest.approx((np.ptp(mine[..., 0], axis=1).sum(),
+                                              np.ptp(mine[..., 1], axis=1).sum()))
+        shallowest = mine[mine[..., 2].min(axis=1).argmin(), :, :2]
+        assert group.highest == pytest.approx(
+            0.5 * (shallowest.min(axis=0) + shallowest.max(axis=0)), abs=1e-9)
+    tops = [group.top for group in census.groups]
+    assert tops == sorted(tops)
+    whole = functools.reduce(lambda a, b: a.with_(b), census.groups)
+    assert (whole.count, whole.top, whole.bottom) == (
+        live.sum(), pytest.approx(corners[..., 2].min()), pytest.approx(corners[..., 2].max()))
+    assert set(whole.classes) == set(census.number[live])
+
+
 def test_bands_divide_all_cells_and_spare_the_lone_shallow_one() -> None:
     bodies, moments = small_field(columns=60, rows=60)
-    live = np.nonzero(losing_volume(*moments.values()))[0]
+    live = losing_volume(*moments.values())
+    first = np.flatnonzero(live)[0]
 
     def corners(index: np.ndarray) -> np.ndarray:
         out = bodies.corners(index)
-        out[index == live[0], :, 2] -= out[index == live[0], :, 2].min() - 60.0
+        out[index == first, :, 2] -= out[index == first, :, 2].min() - 60.0
         return out
 
-    cells = SampledCells.of(Bodies(bodies.count, corners), live, 1e-6, False)
+    census = take_census(Bodies(bodies.count, corners), 1e-6, False, live)
     task = Task(60, 3, 1, 500_000, (-8e3, 8e3), (-8e3, 8e3), True)
-    bands = make_bands(cells, task, [Stencil.of(8, 10.0)], 1e-5)
-    assert np.array_equal(np.sort(np.concatenate([b.which for b in bands])), np.arange(live.size))
-    lone = [band for band in bands if 0 in band.which]
-    assert lone[0].which.size == 1 and lone[0].stencil is None
-    assert all(band.stencil is not None for band in bands if 0 not in band.which)
+    bands = make_bands(census, task, [Stencil.of(8, 10.0)], 1e-5)
+    classes = [n for band in bands for n in band.group.classes]
+    assert sorted(classes) == sorted(set(census.number[live]))
+    assert sum(band.group.count for band in bands) == live.sum()
+    lone = [band for band in bands if census.number[first] in band.group.classes]
+    assert lone[0].group.count == 1 and lone[0].way == "plain"
+    assert all(isinstance(band.way, Stencil) for band in bands if band is not lone[0])
 
 
 @pytest.mark.parametrize("gradient", [False, True])
@@ -164,5 +208,7 @@ def test_the_referee_is_the_plain_sum(earth: object, gradient: bool) -> None:
     expected = Direct().solve(bodies, moments, targets, earth, tolerance=1e-8, gradient=gradient)
     found = plain_sum(bodies, np.arange(bodies.count), moments, targets, earth, sampling=1e-9,
                       gradient=gradient)
+    # kernels without a closed form are series there, made to 1e-8
+    same = 1e-11 if earth is EARTH else 1e-8
     for name, values in expected.items():
-        assert found[name] == pytest.approx(values, abs=1e-11 * np.abs(values).max())
+        assert found[name] == pytest.approx(values, rel=0, abs=same * np.abs(values).max())

@@ -1,0 +1,1 @@
+"""Parts of the benchmarks: invented fields, baselines, and what is measured."""
