@@ -69,6 +69,7 @@ class Crew:
                  trace: TracebackType | None) -> None:
         self._readers.shutdown(wait=True, cancel_futures=True)
         self._pool.shutdown(wait=True, cancel_futures=True)
+        self._memory.clear()
 
     @property
     def findings(self) -> list[Findings]:

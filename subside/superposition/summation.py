@@ -38,6 +38,8 @@ _ACCEPTED = 0.5
 """Part of the tolerance that the check must find kept: it does not see every target."""
 ATTEMPTS = (1.0, 0.1, 0.01, 0.0)
 """Parts of the tolerance that designs aim at in turn as checks fail; 0 is the plain sum."""
+_CHECKED_TOGETHER = 16
+"""Pieces of cells that the check sums at a time."""
 _SINGLE = 3.5e-7
 """Error of single precision in the transforms, over the largest movement (measured: up to 3.2e-7).
 """
@@ -145,6 +147,7 @@ class Summation:
         self._keep: tuple[int, ...] = ()
         self._steps = 0
         self._checked: _Checked | None = None
+        self._error = 0.0
 
     @property
     def method(self) -> str:
@@ -216,7 +219,7 @@ class Summation:
         self._steps = steps
         self._keep = tuple(sorted(set(keep))) if self._bands else ()
         if self._keep:
-            self._checked = None
+            self._checked, self._error = None, 0.0
 
     def share(self) -> Share:
         """An empty share of the leg."""
@@ -351,20 +354,31 @@ class Summation:
 
         Where all cells were summed plainly, the bound of their sampling.
         """
-        if not self._bands or self._checked is None:
+        if not self._bands:
             return self._plain.error
-        checked, targets = self._checked, _some(self._targets, self._ground)
+        if self._checked is not None and self._checked.kept:
+            self._error = self._check(self._checked)
+        return self._error
+
+    def _check(self, checked: _Checked) -> float:
+        """See `error`; what was kept is used up."""
+        targets = _some(self._targets, self._ground)
         assert self._census is not None
         rough = np.max([band.roughness() for band in self._bands], axis=0)
         highest = min(self._census.groups, key=lambda group: group.top).highest
         size = np.abs(checked.field[:3]).max(axis=(0, 1))
         chosen = Check.choose(size, rough, (float(highest[0]), float(highest[1])), targets,
                               Check.affordable(self._census.points, self._earth))
-        cells = np.concatenate([cells for cells, _ in checked.kept])
-        moments = {source: np.concatenate([some[source] for _, some in checked.kept], axis=1)
-                   for source in checked.kept[0][1]}
-        check = Check.at(chosen, self._bodies, cells, moments, targets, self._earth,
-                         tolerance=self._tolerance, gradient=self._gradient)
+        check = None
+        while checked.kept:  # some at a time: those of all cells would be a second copy
+            some = [checked.kept.pop() for _ in range(min(_CHECKED_TOGETHER, len(checked.kept)))]
+            part = Check.at(
+                chosen, self._bodies, np.concatenate([cells for cells, _ in some]),
+                {source: np.concatenate([moments[source] for _, moments in some], axis=1)
+                 for source in some[0][1]},
+                targets, self._earth, tolerance=self._tolerance, gradient=self._gradient)
+            check = part if check is None else check.with_(part)
+        assert check is not None
         peaks = np.abs(checked.field).max(axis=(1, 2))
         return check.error(dict(zip(self.names, checked.field[:, :, chosen], strict=True)),
                            dict(zip(self.names, peaks, strict=True)))
