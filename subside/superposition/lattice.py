@@ -65,9 +65,10 @@ class Lattice:
         self.notes = []
         moments = {source: np.ascontiguousarray(moment, dtype=float)
                    for source, moment in moments.items()}
-        live = losing_volume(*moments.values())
+        alive = {source: losing_volume(moment) for source, moment in moments.items()}
+        live = np.any(list(alive.values()), axis=0)
         moments = {source: moment for source, moment in moments.items()
-                   if losing_volume(moment).any()} or moments
+                   if alive[source].any()} or moments
         cells = np.nonzero(live)[0]
         if bodies.column is not None:  # so that pieces hold whole columns
             cells = cells[np.argsort(bodies.column[cells], kind="stable")]
@@ -81,7 +82,9 @@ class Lattice:
                                 attempt=attempt, live=live)
                 job.begin(steps, dates_to_check(moments))
                 before = told
-                pieces = [cells[start:start + _PIECE] for start in range(0, cells.size, _PIECE)]
+                # in the order of memory again within each piece
+                pieces = [np.sort(cells[start:start + _PIECE])
+                          for start in range(0, cells.size, _PIECE)]
 
                 def fill(some: list[np.ndarray], job: Summation = job) -> Share:
                     share = job.share()
@@ -110,5 +113,6 @@ class Lattice:
 
 def dates_to_check(moments: Mapping[str, np.ndarray]) -> tuple[int, ...]:
     """The date at which most volume is lost or gained; moments are (date, cell)."""
-    size = np.sum([np.abs(moment).sum(axis=1) for moment in moments.values()], axis=0)
+    # date by date: the magnitudes of all would be another array of that size
+    size = np.sum([[np.abs(date).sum() for date in moment] for moment in moments.values()], axis=0)
     return (int(size.argmax()),)
