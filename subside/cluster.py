@@ -25,7 +25,6 @@ import numpy as np
 from subside.batches import Batch
 from subside.compaction.findings import Findings
 from subside.errors import CannotDo, SubsideError
-from subside.grid.stream import FileStream
 from subside.grid.watch import PressureWatch
 from subside.hooks.registry import PLUGIN_MODULE
 from subside.legs import Leg
@@ -168,9 +167,9 @@ class ClusterCrew:
     def _workers_see_files(self) -> bool:
         """Whether every worker sees the very files that were opened here."""
         # by the very names that workers will open
-        files = {str(stream.store.file.path)
-                 for stream in self._work.streams.values() if isinstance(stream, FileStream)}
-        if not files:
+        streams = self._work.streams.values()
+        files = {str(file) for stream in streams for file in stream.files}
+        if not all(stream.files for stream in streams):
             return False
         here = {file: _mark(file) for file in files}
         seen = self._client.run(lambda names: {name: _mark(name) for name in names}, list(here))

@@ -46,7 +46,7 @@ class Outlook:
     ----------
     job : Job
     grid : MapGrid or None
-    outlines : Footprints
+    footprints : Footprints
         Of the cells.
     work : Work
     legs : list of Leg
@@ -60,7 +60,7 @@ class Outlook:
 
     job: Job
     grid: MapGrid | None
-    outlines: Footprints
+    footprints: Footprints
     work: Work
     legs: list[Leg]
     batches: list[Batch]
@@ -92,12 +92,12 @@ class Outlook:
             If it does not fit into its memory.
         """
         threads = workers or os.cpu_count() or 1
-        outlines = Footprints.of(job.bodies) if grid is not None else Footprints.none()
+        footprints = Footprints.of(job.bodies) if grid is not None else Footprints.none()
         work = replace(_work(job), summations=_summations(job, grid, attempt),
                        by_column=grid is not None, by_cell=job.request.by_cell,
-                       shape=outlines.shape)
-        needs = _needs(job, work, grid, outlines, threads, in_memory)
-        outlook = cls(job, grid, outlines, work, _legs(job, needs, memory),
+                       shape=footprints.shape)
+        needs = _needs(job, work, grid, footprints, threads, in_memory)
+        outlook = cls(job, grid, footprints, work, _legs(job, needs, memory),
                       cut_batches(job.streams["pressure"].blocks, job.bodies.column), needs,
                       threads)
         shallowest = float(job.depth.min())
@@ -182,12 +182,12 @@ def _summations(job: Job, grid: MapGrid | None, attempt: int) -> dict[str, Summa
     return found
 
 
-def _needs(job: Job, work: Work, grid: MapGrid | None, outlines: Footprints, threads: int,
+def _needs(job: Job, work: Work, grid: MapGrid | None, footprints: Footprints, threads: int,
            in_memory: bool) -> Needs:
     """Memory of a run, counted generously."""
-    sums = outlines.terms * outlines.outlines.shape[0]
+    sums = footprints.terms * footprints.outlines.shape[0]
     fixed = _WRITER_BYTES + _OUTLINE_BYTES * sums + _REMEMBERED * job.bodies.count
-    fixed += 0 if outlines.shape is None else outlines.shape.nbytes
+    fixed += 0 if footprints.shape is None else footprints.shape.nbytes
     fixed += max((s.fixed_bytes for s in work.summations.values()), default=0.0)
     stream = job.streams["pressure"]
     block = max(stream.bytes_per_date(n) for n in range(len(stream.blocks)))

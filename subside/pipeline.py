@@ -197,7 +197,7 @@ class _Run:
         with Sink(self._target, frame, names) as sink:
             maker = None
             if grid is not None:
-                maker = MapMaker(frame, job.request, grid, outlook.outlines, job.unit, sink, held)
+                maker = MapMaker(frame, job.request, grid, outlook.footprints, job.unit, sink, held)
             self._legs(outlook, gathered, maker, sink)
             summations = outlook.work.summations.values()
             errors = [summation.error() for summation in summations]
